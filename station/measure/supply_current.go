@@ -1,0 +1,155 @@
+package measure
+
+import (
+	"fmt"
+	"math"
+	"math/cmplx"
+
+	"lotgate/limits/quantity"
+	"lotgate/station/signal"
+)
+
+// SupplyCurrent measures the module's supply current (A).
+//
+// The controller chops the shunt's sense voltage to ground at an audio frequency with
+// 50 % duty, so that an AC-coupled input can read a DC current. The fundamental of a
+// square wave between 0 and V has the peak (2/π)·V, hence
+//
+//	I = (π/2)·A1/(R·G)
+//
+// with A1 the peak of the fundamental at the input (V; least-squares sine fit with
+// free frequency and the harmonics fitted beside it, IEEE Std 1057), R the shunt (Ω)
+// and G the gain of its amplifier. The third harmonic must be A1/3 (Fourier series of
+// the square wave): a difference of more than 5 % means that the input clips or the
+// chopper is sick, and the reading is void.
+type SupplyCurrent struct {
+	Acquire quantity.Time `key:"acquire" range:">0" doc:"how long to record; default 0.5 s"`
+	Using   string        `key:"using" among:"chopped|reported" doc:"chopped (default): the shunt through the sound input; reported: what the supply says itself"`
+}
+
+var _ = register(Kind{"supply_current", "supply current through the chopped shunt", func() Measurement {
+	return &SupplyCurrent{Acquire: 0.5, Using: "chopped"}
+}})
+
+// thirdHarmonicTolerance is how far 3·A3/A1 may be from one.
+const thirdHarmonicTolerance = 0.05
+
+// reportedTolerance is the standard uncertainty taken for a supply's own reading where
+// no calibration is given, relative (common practice: 0.5 % class).
+const reportedTolerance = 0.005
+
+// Readings offers the current itself.
+func (m *SupplyCurrent) Readings() []Offer { return []Offer{{"", quantity.Ampere, false}} }
+
+// Check refuses a record too short for the chopper's lines to be told apart.
+func (m *SupplyCurrent) Check(Module) error {
+	if m.Using == "chopped" && (m.Acquire < 0.05 || m.Acquire > 60) {
+		return fmt.Errorf("acquire %v is not possible: write 0.05 s to 60 s", m.Acquire)
+	}
+	return nil
+}
+
+// Prepare records the sense input while the chopper runs.
+func (m *SupplyCurrent) Prepare(b Bench) (Schedule, error) {
+	if m.Using == "reported" {
+		return Schedule{Reported: true}, nil
+	}
+	if b.Chop <= 0 {
+		return Schedule{}, fmt.Errorf("this station has no chopped shunt: give the station file a shunt, or write using: reported")
+	}
+	frames := int(math.Round(float64(m.Acquire) * float64(b.SampleRate)))
+	return Schedule{Acquisitions: []Acquisition{{What: "supply current", Role: Sense, Frames: frames, Chop: true, Settle: 0.1}}}, nil
+}
+
+// Evaluate fits the chopped wave.
+func (m *SupplyCurrent) Evaluate(c *Capture) (Result, error) {
+	if c.Reported != nil {
+		return m.evaluateReported(c), nil
+	}
+	s, err := c.channel(0, Sense)
+	if err != nil {
+		return Result{}, err
+	}
+	if c.Shunt == nil {
+		return Result{}, fmt.Errorf("step %s: the shunt is not given: add shunt: {resistance: …, gain: …, chop: …}", c.Step)
+	}
+	volts, err := c.volts(Sense)
+	if err != nil {
+		return Result{}, err
+	}
+	if v := check(s, "sense"); v != nil {
+		return voidAll(c.Step, m.Readings(), v), nil
+	}
+	chop := float64(c.Shunt.Chop)
+	if 3.2*chop > s.Rate/2 {
+		return Result{}, fmt.Errorf("step %s: a chopping frequency of %v cannot be checked at a sample rate of %.0f Hz: lower it below a sixth of the rate", c.Step, c.Shunt.Chop, s.Rate)
+	}
+	d := signal.Decimate(s.Samples, s.Rate, math.Min(5.4*chop, 0.4*s.Rate))
+	fundamental := strongestNear(d.Samples, d.Rate, chop, 0.03)
+	var multiples []float64
+	for k := 1.0; k*fundamental < 0.46*d.Rate && k <= 9; k++ {
+		multiples = append(multiples, k*fundamental)
+	}
+	fit, err := signal.FitDriven(d.Samples, d.Rate, multiples, nil)
+	if err != nil {
+		return Result{}, fmt.Errorf("step %s: %w: record at least %.2f s", c.Step, err, 10/chop)
+	}
+	a1, a3 := cmplx.Abs(fit.Amplitude[0]), cmplx.Abs(fit.Amplitude[2])
+	spectrum := signal.Periodogram(fit.Residual, d.Rate)
+	noise := localNoise(spectrum, fit.FrequencyHz[0], fit.FrequencyHz, 0, 12)
+	sigma := math.Sqrt(noise.Value * d.Rate / float64(len(d.Samples)))
+	if v := chopperVoid(a1, a3, sigma, chop, fit.FrequencyHz[0]); v != nil {
+		return voidAll(c.Step, m.Readings(), v), nil
+	}
+	if v := steady(fit.Residual, d.Rate, chop/4, 0.4*d.Rate, 24/chop); v != nil {
+		return voidAll(c.Step, m.Readings(), v), nil
+	}
+	perVolt := math.Pi / 2 / (float64(c.Shunt.Resistance) * float64(c.Shunt.Gain))
+	value := perVolt * a1 * volts
+	components := append([]Component{{"scatter of the fitted fundamental", perVolt * sigma * volts, noise.Dof}},
+		c.levelComponents(Sense, value)...)
+	components = append(components, Component{"shunt and its amplifier (calibration)", value * c.Uncertainty["shunt"].Standard(float64(c.Shunt.Resistance)), 0})
+	return Result{Readings: []Reading{{Name: c.Step, Unit: "A", Value: value, Budget: Combine(components...)}}}, nil
+}
+
+func (m *SupplyCurrent) evaluateReported(c *Capture) Result {
+	value := float64(*c.Reported)
+	relative := reportedTolerance
+	if t, ok := c.Uncertainty["reported"]; ok {
+		relative = t.Standard(value)
+	}
+	return Result{Readings: []Reading{{Name: c.Step, Unit: "A", Value: value,
+		Budget: Combine(Component{"the supply's own meter (calibration)", math.Abs(value) * relative, 0}),
+		Notes:  []string{"reported by the supply itself"}}}}
+}
+
+func chopperVoid(a1, a3, sigma, chop, foundHz float64) *Void {
+	if a1 < 6*sigma || sigma == 0 && a1 == 0 {
+		return &Void{"silent", fmt.Sprintf("no chopped signal at %.4g Hz on the sense input", chop), "check the sense cable, the chopper and that the supply is on"}
+	}
+	ratio := 3 * a3 / a1
+	if math.Abs(ratio-1) > thirdHarmonicTolerance+9*sigma/a1 {
+		return &Void{"chopper", fmt.Sprintf("the chopped signal is no square wave: its third harmonic is %.3f of the third it must be (found at %.5g Hz)", ratio, foundHz),
+			"check that the sense input does not clip and that the chopper switches fully at 50 % duty"}
+	}
+	return nil
+}
+
+// strongestNear finds the strongest tone within a relative distance of a frequency: the
+// controller's clock is not the sound interface's. Steps of a quarter line.
+func strongestNear(x []float64, rate, hz, relative float64) float64 {
+	step := rate / float64(len(x)) / 4
+	best, top := hz, -1.0
+	span := math.Floor(hz * relative / step)
+	for i := -span; i <= span; i++ {
+		f := hz + i*step
+		a, err := signal.FitTones(x, []float64{2 * math.Pi * f / rate})
+		if err != nil {
+			continue
+		}
+		if p := cmplx.Abs(a[0]); p > top {
+			best, top = f, p
+		}
+	}
+	return best
+}
