@@ -128,3 +128,11 @@ func numberEnd(s string) int {
 	}
 	return len(string(runes[:i]))
 }
+
+// Detect tells the unit a text is written in; a plain number where none is known.
+func Detect(text string) Unit {
+	if _, u, err := parseAny(text, One); err == nil {
+		return u
+	}
+	return One
+}

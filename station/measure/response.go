@@ -264,6 +264,10 @@ const leastSNR = 4.0
 const neperInDB = 20 / math.Ln10
 
 // curve relates the tones to the reference and reads the rest off the curve.
+//
+// The reference is the level of the smoothed curve at the reference tone (a local
+// parabola through the tones around it), not that one tone's own level: the noise of a
+// single tone would shift all points together.
 func (m *Response) curve(c *Capture, levels []toneLevel) Result {
 	ref := 0
 	for i, l := range levels {
@@ -284,34 +288,37 @@ func (m *Response) curve(c *Capture, levels []toneLevel) Result {
 	if t, ok := c.Uncertainty["shape"]; ok {
 		shape = t.Standard(1)
 	}
-	points := make([]curvePoint, 0, len(levels))
-	for i, l := range levels {
-		p := curvePoint{hz: l.hz, reference: i == ref}
+	var points []curvePoint
+	for _, l := range levels {
 		if l.amplitude < leastSNR*l.noise {
 			r.Notes = append(r.Notes, fmt.Sprintf("the tone at %.5g Hz does not stand out of the noise and is left out", l.hz))
 			continue
 		}
-		p.db = neperInDB * math.Log(l.level/levels[ref].level)
-		p.own = neperInDB * math.Hypot(l.sigma/l.level, shape)
-		p.dof = l.dof
-		points = append(points, p)
+		points = append(points, curvePoint{hz: l.hz, db: neperInDB * math.Log(l.level),
+			own: neperInDB * math.Hypot(l.sigma/l.level, shape), dof: l.dof})
 	}
-	common := neperInDB * math.Hypot(levels[ref].sigma/levels[ref].level, shape)
+	reference := smoothAt(points, math.Log(levels[ref].hz), smoothPoints)
+	for i := range points {
+		points[i].db -= reference.db
+	}
 	var largest Budget
-	for _, p := range points {
-		b := Budget{}
-		if !p.reference {
-			b = Combine(Component{"scatter of the tone (noise on the lines around it)", p.own, p.dof},
-				Component{"scatter of the reference tone", common, levels[ref].dof})
+	for i, p := range points {
+		others := 0.0
+		for k, w := range reference.weight {
+			if k != i {
+				others += w * w * points[k].own * points[k].own
+			}
 		}
+		b := Combine(Component{"scatter of the tone (noise on the lines around it)", math.Abs(1-reference.weight[i]) * p.own, p.dof},
+			Component{"scatter of the reference level", math.Sqrt(others), p.dof * smoothPoints / 2})
 		if b.Expanded >= largest.Expanded {
 			largest = b
 		}
 		r.Points = append(r.Points, Point{p.hz, p.db, b.Expanded})
 	}
 	r.Budget = largest
-	r.Notes = append(r.Notes, fmt.Sprintf("relative to the tone at %.5g Hz; the budget shown is that of the least certain point", levels[ref].hz))
-	out := Result{Readings: append([]Reading{r}, m.features(c, points, common)...)}
+	r.Notes = append(r.Notes, fmt.Sprintf("relative to the smoothed level at %.5g Hz; the budget shown is that of the least certain point", levels[ref].hz))
+	out := Result{Readings: append([]Reading{r}, m.features(c, points, reference.weight, levels[ref].hz)...)}
 	f := Figure{Name: c.Step + ".curve", Title: "IF response", XUnit: "Hz", YUnit: "dB"}
 	for _, p := range points {
 		f.Series = append(f.Series, [2]float64{p.hz, p.db})

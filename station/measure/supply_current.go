@@ -101,7 +101,7 @@ func (m *SupplyCurrent) Evaluate(c *Capture) (Result, error) {
 	if v := chopperVoid(a1, a3, sigma, chop, fit.FrequencyHz[0]); v != nil {
 		return voidAll(c.Step, m.Readings(), v), nil
 	}
-	if v := steady(fit.Residual, d.Rate, chop/4, 0.4*d.Rate, 24/chop); v != nil {
+	if v := steady(fit.Residual, d.Rate, chop/4, math.Min(4.5*chop, 0.36*s.Rate), 24/chop); v != nil {
 		return voidAll(c.Step, m.Readings(), v), nil
 	}
 	perVolt := math.Pi / 2 / (float64(c.Shunt.Resistance) * float64(c.Shunt.Gain))

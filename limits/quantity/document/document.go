@@ -349,3 +349,9 @@ func kindName(n *yaml.Node) string {
 	}
 	return "single value"
 }
+
+// Struct reads a mapping into the struct that into points to, even where that type
+// would read itself.
+func (r *Reader) Struct(n *yaml.Node, into any) {
+	r.mapping(n, reflect.ValueOf(into).Elem(), "")
+}

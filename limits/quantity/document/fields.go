@@ -57,3 +57,6 @@ func orderedFields(t reflect.Type) []field {
 	}
 	return out
 }
+
+// KeysOf lists the YAML keys of the struct type T.
+func KeysOf[T any]() []string { return Keys(reflect.TypeFor[T]()) }

@@ -87,3 +87,6 @@ func structSchema(t reflect.Type) map[string]any {
 	}
 	return s
 }
+
+// TypeOf describes the type T.
+func TypeOf[T any]() map[string]any { return TypeSchema(reflect.TypeFor[T]()) }
