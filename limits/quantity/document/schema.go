@@ -90,3 +90,12 @@ func structSchema(t reflect.Type) map[string]any {
 
 // TypeOf describes the type T.
 func TypeOf[T any]() map[string]any { return TypeSchema(reflect.TypeFor[T]()) }
+
+// SchemaOf describes the type of v, even where that type would describe itself.
+func SchemaOf(v any) map[string]any {
+	t := reflect.TypeOf(v)
+	for t.Kind() == reflect.Pointer {
+		t = t.Elem()
+	}
+	return structSchema(t)
+}

@@ -1,4 +1,6 @@
-package measure
+// Package tolerance is an expanded uncertainty as calibration certificates and the
+// program's files state it.
+package tolerance
 
 import (
 	"fmt"
@@ -56,31 +58,4 @@ func (t *Tolerance) ReadNode(r *document.Reader, n *yaml.Node) {
 // Schema describes a tolerance.
 func (t Tolerance) Schema() map[string]any {
 	return map[string]any{"type": "string", "description": "expanded uncertainty (k = 2), relative or in the quantity's unit", "examples": []string{"0.4 %", "0.5 mm"}}
-}
-
-// SupplyState is "off" or the supply's voltage.
-type SupplyState struct {
-	Given   bool
-	Off     bool
-	Voltage quantity.Voltage
-}
-
-// ReadNode reads "off" or "5 V".
-func (s *SupplyState) ReadNode(r *document.Reader, n *yaml.Node) {
-	s.Given = true
-	if n.Value == "off" {
-		s.Off = true
-		return
-	}
-	v, err := quantity.ParseAs[quantity.Voltage](n.Value)
-	if err != nil || v <= 0 {
-		r.Fail(n, fmt.Sprintf("supply %q is not readable", n.Value), "write off, or a voltage, such as 5 V")
-		return
-	}
-	s.Voltage = v
-}
-
-// Schema describes a supply state.
-func (s SupplyState) Schema() map[string]any {
-	return map[string]any{"type": "string", "description": "off, or a voltage", "examples": []string{"off", "5.00 V"}}
 }
