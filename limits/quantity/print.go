@@ -81,3 +81,14 @@ func PrintWith(value, u float64, unit Unit) string {
 	return join(strconv.FormatFloat(value/factor, 'f', d, 64), prefix, unit) + " ± " +
 		join(strconv.FormatFloat(u/factor, 'f', d, 64), prefix, unit)
 }
+
+// PrintExact writes a value with its unit and an SI prefix and all its digits, for files
+// that a machine reads back.
+func PrintExact(value float64, unit Unit) string {
+	prefix, factor := scaleFor(value, unit)
+	scaled := value / factor
+	if factor < 1 { // a power of ten below one is not exact: multiply by its inverse, which is
+		scaled = value * math.Round(1/factor)
+	}
+	return join(strconv.FormatFloat(scaled, 'g', -1, 64), prefix, unit)
+}

@@ -87,7 +87,7 @@ func (m *SupplyCurrent) Evaluate(c *Capture) (Result, error) {
 	d := signal.Decimate(s.Samples, s.Rate, math.Min(5.4*chop, 0.4*s.Rate))
 	fundamental := strongestNear(d.Samples, d.Rate, chop, 0.03)
 	var multiples []float64
-	for k := 1.0; k*fundamental < 0.46*d.Rate && k <= 9; k++ {
+	for k := 1.0; k*fundamental < 0.495*d.Rate && k <= 9; k++ {
 		multiples = append(multiples, k*fundamental)
 	}
 	fit, err := signal.FitDriven(d.Samples, d.Rate, multiples, nil)

@@ -35,3 +35,11 @@ func (s *SupplyState) ReadNode(r *document.Reader, n *yaml.Node) {
 func (s SupplyState) Schema() map[string]any {
 	return map[string]any{"type": "string", "description": "off, or a voltage", "examples": []string{"off", "5.00 V"}}
 }
+
+// WriteNode writes a supply state as ReadNode reads it.
+func (s SupplyState) WriteNode() (*yaml.Node, error) {
+	if s.Off {
+		return document.Text("off"), nil
+	}
+	return document.NodeOf(s.Voltage)
+}

@@ -4,6 +4,7 @@ package tolerance
 
 import (
 	"fmt"
+	"strconv"
 
 	"gopkg.in/yaml.v3"
 
@@ -58,4 +59,12 @@ func (t *Tolerance) ReadNode(r *document.Reader, n *yaml.Node) {
 // Schema describes a tolerance.
 func (t Tolerance) Schema() map[string]any {
 	return map[string]any{"type": "string", "description": "expanded uncertainty (k = 2), relative or in the quantity's unit", "examples": []string{"0.4 %", "0.5 mm"}}
+}
+
+// WriteNode writes a tolerance as ReadNode reads it.
+func (t Tolerance) WriteNode() (*yaml.Node, error) {
+	if u, ok := quantity.UnitBySymbol(t.Unit); ok && t.Absolute != 0 {
+		return document.Text(quantity.PrintExact(t.Absolute, u)), nil
+	}
+	return document.Text(strconv.FormatFloat(t.Relative*100, 'g', -1, 64) + " %"), nil
 }
