@@ -151,7 +151,7 @@ func (r *Runner) step(ctx context.Context, a *record.Attempt, e *Evaluation, s p
 func voidResult(s plan.Step, v *measure.Void) measure.Result {
 	var out measure.Result
 	for _, o := range s.Measure.Readings() {
-		out.Readings = append(out.Readings, measure.Reading{Name: s.ID + o.Suffix, Unit: o.Unit.Symbol, Void: v})
+		out.Readings = append(out.Readings, measure.Reading{Name: s.ID + o.Suffix, Unit: o.Unit.Symbol, Curve: o.Curve, Void: v})
 	}
 	return out
 }

@@ -73,11 +73,15 @@ func (r *Runner) Run(ctx context.Context, u Unit) ([]*record.Attempt, error) {
 			a.Reason = fmt.Sprintf("still marginal after %d attempts, which this plan counts as %s: %s", marginals+1, r.Plan.Retry.Then, a.Reason)
 			a.Verdict = limits.Verdict(r.Plan.Retry.Then)
 		}
+		verdict := record.Event{Time: a.Ended, Kind: "verdict", Text: fmt.Sprintf("%s: %s", a.Verdict, a.Reason)}
+		a.Events = append(a.Events, verdict)
 		// What was measured is kept even if the caller has given up meanwhile.
 		if err := r.Store.Save(context.WithoutCancel(ctx), a); err != nil {
 			return all, errors.Join(runErr, fmt.Errorf("attempt on unit %s could not be kept, so its verdict does not count: %w", u.Serial, err))
 		}
-		r.emit(a, "verdict", "", fmt.Sprintf("%s: %s", a.Verdict, a.Reason))
+		if r.Tell != nil { // only now: nobody is told a verdict that is not safe on disk
+			r.Tell(verdict)
+		}
 		all = append(all, a)
 		if runErr != nil {
 			return all, runErr

@@ -106,7 +106,7 @@ func near(f float64, list []float64, distance float64) bool {
 func voidAll(step string, offers []Offer, v *Void) Result {
 	var r Result
 	for _, o := range offers {
-		r.Readings = append(r.Readings, Reading{Name: step + o.Suffix, Unit: o.Unit.Symbol, Void: v})
+		r.Readings = append(r.Readings, Reading{Name: step + o.Suffix, Unit: o.Unit.Symbol, Curve: o.Curve, Void: v})
 	}
 	return r
 }

@@ -17,7 +17,8 @@ type Reading struct {
 	Value float64 `json:"value"`
 	// Budget is how uncertain Value is, and why.
 	Budget Budget `json:"budget"`
-	// Points is set for curves: then the reading has no single value.
+	// Curve says that the reading is a curve: its Points are the numbers, Value is none.
+	Curve  bool    `json:"curve,omitempty"`
 	Points []Point `json:"points,omitempty"`
 	// Missing is the sentence that stands in place of a number where too little is
 	// known to give one.

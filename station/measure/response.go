@@ -275,12 +275,12 @@ func (m *Response) curve(c *Capture, levels []toneLevel) Result {
 			ref = i
 		}
 	}
-	r := Reading{Name: c.Step + ".curve", Unit: "dB"}
+	r := Reading{Name: c.Step + ".curve", Unit: "dB", Curve: true}
 	if levels[ref].amplitude < leastSNR*levels[ref].noise {
 		missing := fmt.Sprintf("the reference tone at %.5g Hz does not stand out of the noise: no echo to relate the response to", levels[ref].hz)
 		out := Result{}
 		for _, o := range m.Readings() {
-			out.Readings = append(out.Readings, Reading{Name: c.Step + o.Suffix, Unit: o.Unit.Symbol, Missing: missing})
+			out.Readings = append(out.Readings, Reading{Name: c.Step + o.Suffix, Unit: o.Unit.Symbol, Curve: o.Curve, Missing: missing})
 		}
 		return out
 	}

@@ -4,7 +4,6 @@ import (
 	"crypto/sha256"
 	"encoding/base32"
 	"encoding/hex"
-	"encoding/json"
 	"fmt"
 	"strings"
 )
@@ -18,11 +17,11 @@ func hashOf(data []byte) string {
 // attempt's content as JSON, in groups of four characters of base 32. It changes with any
 // number, name, time or file of the attempt, and can be worked out again from the store.
 func Fingerprint(a *Attempt) string {
-	data, err := json.Marshal(a)
+	data, err := wholeOf(a)
 	if err != nil {
 		panic(fmt.Sprintf("record: an attempt cannot be written as JSON: %v", err)) // readings are checked to be finite
 	}
-	sum := sha256.Sum256(data)
+	sum := sha256.Sum256([]byte(data))
 	text := base32.StdEncoding.EncodeToString(sum[:10])
 	var groups []string
 	for i := 0; i < len(text); i += 4 {

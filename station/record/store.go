@@ -137,7 +137,7 @@ func (s *Store) Save(ctx context.Context, a *Attempt) (err error) {
 	}
 	for _, r := range a.Readings {
 		var value, expanded any
-		if r.Void == nil && r.Missing == "" && len(r.Points) == 0 {
+		if r.Void == nil && r.Missing == "" && !r.Curve {
 			value, expanded = r.Value, r.Budget.Expanded
 		}
 		if _, err := tx.ExecContext(ctx, "INSERT INTO readings VALUES (?,?,?,?,?,?,?,?)", a.ID, r.Name, r.Unit, value, expanded, r.Lower, r.Upper, string(r.Verdict)); err != nil {

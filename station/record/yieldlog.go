@@ -50,7 +50,7 @@ func (y YieldLog) Append(ctx context.Context, a *Attempt) (note string, err erro
 		return fmt.Sprintf("the yield log was torn: it is kept as %s and was written again from the store", aside), y.Rebuild(ctx, a.Lot)
 	}
 	for _, r := range a.Readings {
-		if !has(header, columnOf(r)) && len(r.Points) == 0 {
+		if !r.Curve && !has(header, columnOf(r)) {
 			return "", y.Rebuild(ctx, a.Lot)
 		}
 	}
@@ -79,7 +79,7 @@ func (y YieldLog) Rebuild(ctx context.Context, lot string) error {
 	units := map[string]bool{}
 	if err := y.Store.Attempts(ctx, Filter{Lot: lot}, func(a *Attempt) bool {
 		for _, r := range a.Readings {
-			if len(r.Points) == 0 && r.Unit != "" && !isCurve(r) {
+			if !r.Curve {
 				units[columnOf(r)] = true
 			}
 		}
@@ -110,8 +110,6 @@ func (y YieldLog) Rebuild(ctx context.Context, lot string) error {
 	}
 	return WriteFile(path, out.Bytes())
 }
-
-func isCurve(r Judged) bool { return len(r.Reading.Points) > 0 }
 
 func columnOf(r Judged) string { return r.Name + " (" + r.Unit + ")" }
 
