@@ -107,14 +107,17 @@ func nearest(value float64, lower, upper *float64) (limit float64, isLower bool)
 
 func reason(v Verdict, l Limit, unit quantity.Unit, value, u float64, lower, upper *float64) string {
 	limit, isLower := nearest(value, lower, upper)
+	distance := quantity.PrintTo(math.Abs(value-limit), u, unit)
 	need := "at most "
 	if isLower {
 		need = "at least "
 	}
+	if l.Mask != nil { // between two corners: as many digits as the value
+		limit = math.Round(limit*100) / 100
+	}
 	need += quantity.Print(limit, unit)
 	name := plainName(l.Reading)
 	shown := quantity.PrintTo(value, u, unit)
-	distance := quantity.PrintTo(math.Abs(value-limit), u, unit)
 	switch v {
 	case Pass:
 		return fmt.Sprintf("%s %s, inside by %s (%s)", name, shown, distance, need)

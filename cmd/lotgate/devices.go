@@ -43,6 +43,7 @@ func (a *app) soundDevices(list []sound.DeviceInfo, err error) {
 	if len(list) == 0 {
 		fmt.Fprintln(a.out, "  none: connect a sound interface")
 	}
+	fmt.Fprintln(a.out, "  (* is the system's default; a station file names a device by its name or id)")
 	for _, d := range list {
 		way, mark := "playback ", " "
 		if d.Capture {
@@ -55,7 +56,7 @@ func (a *app) soundDevices(list []sound.DeviceInfo, err error) {
 		if len(d.Rates) > 0 {
 			rates = fmt.Sprintf("%v Hz", d.Rates)
 		}
-		fmt.Fprintf(a.out, "  %s %s  %-40s %s, up to %d channels\n", mark, way, d.Name, rates, d.Channels)
+		fmt.Fprintf(a.out, "  %s %s  %-34s %s, up to %d channels, id %s\n", mark, way, d.Name, rates, d.Channels, d.ID)
 	}
 }
 

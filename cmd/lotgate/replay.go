@@ -101,7 +101,7 @@ func replayOne(dir string, l *limits.File) replayed {
 	if err != nil {
 		err = fmt.Errorf("%s: %w", dir, err)
 	}
-	f.Captures = nil // the samples are not needed any more
+	f.Release()
 	return replayed{f, e, err}
 }
 

@@ -20,7 +20,7 @@ func check(s Signal, name string) *Void {
 	case h.AtFullScale >= 2:
 		return &Void{"overload", fmt.Sprintf("the %s input was overloaded: %d of %d samples at full scale", name, h.AtFullScale, len(s.Samples)),
 			"lower the preamplifier's gain or the input's level, then take it again"}
-	case h.RMS < 3e-8:
+	case h.StepRMS < 3e-8:
 		return &Void{"silent", fmt.Sprintf("the %s channel is silent", name), "check cable, channel number and the input's switch"}
 	case h.GapStart >= 0:
 		return &Void{"dropout", fmt.Sprintf("samples were lost: the %s channel is silent for %.0f ms at %.2f s", name, h.GapSeconds*1e3, h.GapStart),

@@ -3,7 +3,6 @@ package measure
 import (
 	"fmt"
 	"math"
-	"math/cmplx"
 
 	"lotgate/limits/quantity"
 	"lotgate/station/signal"
@@ -214,13 +213,14 @@ func (m *NoiseFloor) withoutMains(x []float64, rate, low, high float64) *noiseSp
 func takeOut(x []float64, rate, hz float64) {
 	fine := strongestNear(x, rate, hz, rate/float64(len(x))/hz)
 	for step := rate / float64(len(x)) / 8; step > rate/float64(len(x))/100; step /= 2 {
-		best, top := fine, -1.0
-		for _, f := range []float64{fine - step, fine, fine + step} {
-			if a, err := signal.FitTones(x, []float64{2 * math.Pi * f / rate}); err == nil && cmplx.Abs(a[0]) > top {
-				best, top = f, cmplx.Abs(a[0])
-			}
+		toRadians := 2 * math.Pi / rate
+		beside := signal.Strengths(x, []float64{(fine - step) * toRadians, fine * toRadians, (fine + step) * toRadians})
+		switch {
+		case beside[0] > beside[1] && beside[0] >= beside[2]:
+			fine -= step
+		case beside[2] > beside[1]:
+			fine += step
 		}
-		fine = best
 	}
 	w := []float64{2 * math.Pi * fine / rate}
 	if a, err := signal.FitTones(x, w); err == nil {

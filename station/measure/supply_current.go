@@ -139,17 +139,17 @@ func chopperVoid(a1, a3, sigma, chop, foundHz float64) *Void {
 // controller's clock is not the sound interface's. Steps of a quarter line.
 func strongestNear(x []float64, rate, hz, relative float64) float64 {
 	step := rate / float64(len(x)) / 4
-	best, top := hz, -1.0
-	span := math.Floor(hz * relative / step)
+	span := int(hz * relative / step)
+	w := make([]float64, 0, 2*span+1)
 	for i := -span; i <= span; i++ {
-		f := hz + i*step
-		a, err := signal.FitTones(x, []float64{2 * math.Pi * f / rate})
-		if err != nil {
-			continue
-		}
-		if p := cmplx.Abs(a[0]); p > top {
-			best, top = f, p
+		w = append(w, 2*math.Pi*(hz+float64(i)*step)/rate)
+	}
+	best := 0
+	strengths := signal.Strengths(x, w)
+	for i, v := range strengths {
+		if v > strengths[best] {
+			best = i
 		}
 	}
-	return best
+	return w[best] * rate / (2 * math.Pi)
 }

@@ -161,6 +161,8 @@ func (f *Folder) load(dir string, c *measure.Capture) error {
 	for i, role := range roles {
 		channels[i] = c.Inputs[role]
 	}
+	buffer := fileBuffers.take()
+	defer func() { fileBuffers.give(buffer) }()
 	for _, name := range files {
 		if name == "" {
 			return errors.New("no file is given: write file: or parts:")
@@ -169,10 +171,11 @@ func (f *Folder) load(dir string, c *measure.Capture) error {
 			return fmt.Errorf("the file %q lies outside the folder: name a file beside %s", name, CaptureFile)
 		}
 		path := filepath.Join(dir, name)
-		data, err := os.ReadFile(path)
+		data, err := readInto(buffer, path)
 		if err != nil {
 			return err
 		}
+		buffer = data
 		format, samples, err := wav.Decode(path, data, channels)
 		if err != nil {
 			return err
@@ -187,4 +190,16 @@ func (f *Folder) load(dir string, c *measure.Capture) error {
 		c.Signals = append(c.Signals, signals)
 	}
 	return nil
+}
+
+// Release gives the samples back for the next folder; the captures are of no use after it.
+func (f *Folder) Release() {
+	for _, c := range f.Captures {
+		for _, signals := range c.Signals {
+			for _, s := range signals {
+				wav.GiveBack(s.Samples)
+			}
+		}
+	}
+	f.Captures = nil
 }

@@ -13,13 +13,19 @@ type Estimate struct {
 // A Gap is a stretch of a spectrum that is left out, Hz.
 type Gap struct{ LowHz, HighHz float64 }
 
-func inGap(hz float64, gaps []Gap) bool {
+// gapMask marks the lines of a spectrum that lie in gaps; nil where there are none.
+func gapMask(s Spectrum, gaps []Gap) []bool {
+	if len(gaps) == 0 {
+		return nil
+	}
+	mask := make([]bool, len(s.Power))
 	for _, g := range gaps {
-		if hz >= g.LowHz && hz <= g.HighHz {
-			return true
+		first := max(0, int(math.Ceil(g.LowHz/s.Step-1e-9)))
+		for k := first; k < len(mask) && float64(k)*s.Step <= g.HighHz*(1+1e-12); k++ {
+			mask[k] = true
 		}
 	}
-	return false
+	return mask
 }
 
 // BandPower integrates a spectrum between two frequencies. Lines in gaps are filled
@@ -27,37 +33,22 @@ func inGap(hz float64, gaps []Gap) bool {
 // of exponentially distributed lines: variance Spread·Σ(P·Step)², with what was
 // filled counted for the neighbours it came from.
 func BandPower(s Spectrum, lowHz, highHz float64, gaps []Gap) Estimate {
-	weight := map[int]float64{}
-	filled := []struct {
-		share float64
-		lines []int
-	}{}
-	lines := len(s.Power)
-	sum := 0.0
-	direct := make([]float64, lines)
-	for k := 1; k < lines; k++ {
-		hz := float64(k) * s.Step
-		share := lineShare(hz, s.Step, lowHz, highHz)
-		if share == 0 {
-			continue
-		}
-		if !inGap(hz, gaps) {
-			direct[k] += share
-			continue
-		}
-		filled = append(filled, struct {
-			share float64
-			lines []int
-		}{share, neighbours(s, hz, gaps)})
+	first := max(1, int(lowHz/s.Step))
+	last := min(len(s.Power)-1, int(highHz/s.Step)+1)
+	weight := make([]float64, len(s.Power))
+	for k := first; k <= last; k++ {
+		weight[k] = 1
 	}
-	for _, f := range filled {
-		for _, n := range f.lines {
-			weight[n] += f.share / float64(len(f.lines))
+	for _, k := range []int{first, first + 1, last - 1, last} { // only lines at the edges are cut
+		if k >= first && k <= last {
+			weight[k] = lineShare(float64(k)*s.Step, s.Step, lowHz, highHz)
 		}
 	}
-	variance := 0.0
-	for k := 1; k < lines; k++ {
-		g := direct[k] + weight[k]
+	if mask := gapMask(s, gaps); mask != nil {
+		fillGaps(weight, mask, first, last)
+	}
+	sum, variance := 0.0, 0.0
+	for k, g := range weight {
 		if g == 0 {
 			continue
 		}
@@ -83,31 +74,46 @@ func lineShare(hz, step, lowHz, highHz float64) float64 {
 	return (high - low) / step
 }
 
-// neighbours lists lines outside all gaps on either side of the gap that hz lies in,
-// as many on each side as make up the gap's width (at least three).
-func neighbours(s Spectrum, hz float64, gaps []Gap) []int {
-	var own Gap
-	for _, g := range gaps {
-		if hz >= g.LowHz && hz <= g.HighHz {
-			own = g
+// fillGaps moves the weights of masked lines to their neighbours: to as many unmasked lines
+// on each side as the gap has (three at least), in equal parts.
+func fillGaps(weight []float64, mask []bool, first, last int) {
+	for k := first; k <= last; k++ {
+		if !mask[k] {
+			continue
 		}
-	}
-	want := max(3, int((own.HighHz-own.LowHz)/s.Step))
-	var out []int
-	for dir := -1; dir <= 1; dir += 2 {
-		edge := own.LowHz
-		if dir > 0 {
-			edge = own.HighHz
+		end, moved := k, 0.0
+		for end <= last && mask[end] {
+			moved += weight[end]
+			weight[end] = 0
+			end++
 		}
-		found := 0
-		for k := s.Line(edge); k > 0 && k < len(s.Power) && found < want; k += dir {
-			if !inGap(float64(k)*s.Step, gaps) {
-				out = append(out, k)
+		whole := k
+		for whole > 1 && mask[whole-1] {
+			whole--
+		}
+		beyond := end
+		for beyond < len(mask) && mask[beyond] {
+			beyond++
+		}
+		want := max(3, beyond-whole)
+		var to []int
+		for n, found := whole-1, 0; n > 0 && found < want; n-- {
+			if !mask[n] {
+				to = append(to, n)
 				found++
 			}
 		}
+		for n, found := beyond, 0; n < len(mask) && found < want; n++ {
+			if !mask[n] {
+				to = append(to, n)
+				found++
+			}
+		}
+		for _, n := range to {
+			weight[n] += moved / float64(len(to))
+		}
+		k = end
 	}
-	return out
 }
 
 // group is some neighbouring lines taken together.
@@ -128,12 +134,13 @@ func groups(s Spectrum, lowHz, highHz float64, gaps []Gap) []group {
 		g = group{}
 	}
 	first := max(1, int(math.Ceil(lowHz/s.Step-1e-9)))
+	mask := gapMask(s, gaps)
 	for k := first; k < len(s.Power); k++ {
 		hz := float64(k) * s.Step
 		if hz > highHz*(1+1e-12) {
 			break
 		}
-		if inGap(hz, gaps) {
+		if mask != nil && mask[k] {
 			continue
 		}
 		if hz > upper {

@@ -62,7 +62,7 @@ func FindUnsteady(pieces []Spectrum, lowHz, highHz float64) (worst Unsteady, ok 
 // Health is what a raw record looks like before anything is made of it.
 type Health struct {
 	AtFullScale int     // samples at or beyond full scale
-	RMS         float64 // fraction of full scale, mean taken out
+	StepRMS     float64 // effective value of the steps from sample to sample, fraction of full scale
 	GapStart    float64 // s; where the first gap is, −1 for none
 	GapSeconds  float64
 }
@@ -84,38 +84,34 @@ func Look(x []float64, rate float64) Health {
 		return h
 	}
 	block := max(32, int(rate/250))
-	var steps []float64
-	sum, square := 0.0, 0.0
-	previous := x[0]
+	steps := make([]float64, 0, len(x)/block)
+	previous, high, low, total := x[0], x[0], x[0], 0.0
 	for start := 0; start < len(x); start += block {
-		end := min(start+block, len(x))
-		part := x[start:end]
-		var d2, s, q, top float64
+		part := x[start:min(start+block, len(x))]
+		d2 := 0.0
 		for _, v := range part {
 			d := v - previous
 			previous = v
 			d2 += d * d
-			s += v
-			q += v * v
-			if a := math.Abs(v); a > top {
-				top = a
+			if v > high {
+				high = v
+			} else if v < low {
+				low = v
 			}
 		}
-		if top >= fullScaleShare {
-			for _, v := range part {
-				if math.Abs(v) >= fullScaleShare {
-					h.AtFullScale++
-				}
-			}
-		}
-		sum += s
-		square += q
+		total += d2
 		if len(part) == block {
 			steps = append(steps, d2)
 		}
 	}
-	n := float64(len(x))
-	h.RMS = math.Sqrt(math.Max(0, square/n-sum/n*sum/n))
+	h.StepRMS = math.Sqrt(total / float64(len(x)))
+	if high >= fullScaleShare || low <= -fullScaleShare {
+		for _, v := range x {
+			if math.Abs(v) >= fullScaleShare {
+				h.AtFullScale++
+			}
+		}
+	}
 	findGap(&h, steps, float64(block)/rate)
 	return h
 }

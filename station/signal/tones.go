@@ -20,6 +20,12 @@ var ErrTonesTooClose = errors.New("the record is too short to tell the tones apa
 // form. For white noise this is the maximum-likelihood estimate and its variance is
 // the Cramér–Rao bound (Rife & Boorstyn, IEEE Trans. IT-20 (1974) 591).
 func FitTones(x []float64, w []float64) ([]complex128, error) {
+	a, _, err := fitTones(x, w)
+	return a, err
+}
+
+// fitTones also gives the sum of squares that the fit explains.
+func fitTones(x []float64, w []float64) (a []complex128, explained float64, err error) {
 	k := len(w)
 	n := float64(len(x))
 	sums := correlate(x, w)
@@ -46,22 +52,23 @@ func FitTones(x []float64, w []float64) ([]complex128, error) {
 	var solver mat.Cholesky
 	var cosines, sines mat.VecDense
 	if ok := solver.Factorize(even); !ok || solver.Cond() > 1e8 {
-		return nil, ErrTonesTooClose
+		return nil, 0, ErrTonesTooClose
 	}
 	if err := solver.SolveVecTo(&cosines, rightEven); err != nil {
-		return nil, ErrTonesTooClose
+		return nil, 0, ErrTonesTooClose
 	}
 	if ok := solver.Factorize(odd); !ok || solver.Cond() > 1e8 {
-		return nil, ErrTonesTooClose
+		return nil, 0, ErrTonesTooClose
 	}
 	if err := solver.SolveVecTo(&sines, rightOdd); err != nil {
-		return nil, ErrTonesTooClose
+		return nil, 0, ErrTonesTooClose
 	}
 	out := make([]complex128, k)
 	for i := range out {
 		out[i] = complex(cosines.AtVec(i), -sines.AtVec(i))
 	}
-	return out, nil
+	explained = mat.Dot(&cosines, rightEven) + mat.Dot(&sines, rightOdd)
+	return out, explained, nil
 }
 
 // dirichlet is Σ cos(w·(n−(N−1)/2)) over the record.
@@ -73,56 +80,79 @@ func dirichlet(w, n float64) float64 {
 	return math.Sin(n*w/2) / s
 }
 
-// correlate gives Σ x[n]·exp(−i·w·(n−(N−1)/2)) for each w.
+// correlate gives Σ x[n]·exp(−i·w·(n−(N−1)/2)) for each w. The record is folded about its
+// middle first: sums of mirrored samples meet the cosines, differences the sines.
 func correlate(x, w []float64) []complex128 {
+	half := (len(x) + 1) / 2
+	folded := make([]float64, 2*half)
+	sum, difference := folded[:half], folded[half:]
+	start := 0.5 // of the first pair from the middle, in samples
+	if len(x)%2 == 1 {
+		start = 0
+		sum[0] = x[half-1]
+		for k := 1; k < half; k++ {
+			sum[k], difference[k] = x[half-1+k]+x[half-1-k], x[half-1+k]-x[half-1-k]
+		}
+	} else {
+		for k := range half {
+			sum[k], difference[k] = x[half+k]+x[half-1-k], x[half+k]-x[half-1-k]
+		}
+	}
 	out := make([]complex128, len(w))
-	middle := float64(len(x)-1) / 2
 	for i := range w {
-		out[i] = dtft(x, w[i]) * cmplx.Exp(complex(0, w[i]*middle))
+		c, s := project(sum, difference, w[i], start)
+		out[i] = complex(c, -s)
 	}
 	return out
 }
 
-// dtftBlock is how many samples share one exactly computed phase, so that rounding
-// in the rotating phasor does not add up over long records.
-const dtftBlock = 512
-
-// dtft is the discrete-time Fourier transform at one angular frequency, by four
-// interleaved phasors that each turn by 4w, so that the processor is not kept
-// waiting by one chain of multiplications.
-func dtft(x []float64, w float64) complex128 {
-	stepIm, stepRe := math.Sincos(-4 * w)
-	var sumRe, sumIm float64
-	for start := 0; start < len(x); start += dtftBlock {
-		end := min(start+dtftBlock, len(x))
-		b := x[start:end]
-		var pr, pi, ar, ai [4]float64
-		for q := range 4 {
-			pi[q], pr[q] = math.Sincos(-w * float64(start+q))
-		}
-		for len(b) >= 4 {
-			ar[0] += b[0] * pr[0]
-			ai[0] += b[0] * pi[0]
-			ar[1] += b[1] * pr[1]
-			ai[1] += b[1] * pi[1]
-			ar[2] += b[2] * pr[2]
-			ai[2] += b[2] * pi[2]
-			ar[3] += b[3] * pr[3]
-			ai[3] += b[3] * pi[3]
-			pr[0], pi[0] = pr[0]*stepRe-pi[0]*stepIm, pr[0]*stepIm+pi[0]*stepRe
-			pr[1], pi[1] = pr[1]*stepRe-pi[1]*stepIm, pr[1]*stepIm+pi[1]*stepRe
-			pr[2], pi[2] = pr[2]*stepRe-pi[2]*stepIm, pr[2]*stepIm+pi[2]*stepRe
-			pr[3], pi[3] = pr[3]*stepRe-pi[3]*stepIm, pr[3]*stepIm+pi[3]*stepRe
-			b = b[4:]
-		}
-		for q, v := range b {
-			ar[q] += v * pr[q]
-			ai[q] += v * pi[q]
-		}
-		sumRe += ar[0] + ar[1] + ar[2] + ar[3]
-		sumIm += ai[0] + ai[1] + ai[2] + ai[3]
+// Strengths gives the amplitude each angular frequency (radians per sample) would have if it
+// were the only tone: |Σ x[n]·exp(−iwn)|·2/N. It is for finding a tone, not for measuring it.
+func Strengths(x, w []float64) []float64 {
+	out := make([]float64, len(w))
+	for i, c := range correlate(x, w) {
+		out[i] = 2 * cmplx.Abs(c) / float64(len(x))
 	}
-	return complex(sumRe, sumIm)
+	return out
+}
+
+// chebyshevBlock is how many samples share exactly computed starting values, so that rounding
+// in the recurrences does not add up over long records.
+const chebyshevBlock = 512
+
+// project gives Σ a[k]·cos(w·(k+start)) and Σ b[k]·sin(w·(k+start)). Cosines and sines follow
+// from y[n] = 2·cos(2w)·y[n−2] − y[n−4], two interleaved chains each, so that the processor
+// is not kept waiting by one.
+func project(a, b []float64, w, start float64) (cosines, sines float64) {
+	t := 2 * math.Cos(2*w)
+	for from := 0; from < len(a); from += chebyshevBlock {
+		to := min(from+chebyshevBlock, len(a))
+		p, q := a[from:to], b[from:to:to]
+		at := w * (float64(from) + start)
+		s0, c0 := math.Sincos(at)
+		s1, c1 := math.Sincos(at + w)
+		s2, c2 := math.Sincos(at - 2*w)
+		s3, c3 := math.Sincos(at - w)
+		var x0, x1, y0, y1 float64
+		for len(p) >= 2 && len(q) >= 2 {
+			x0 += p[0] * c0
+			y0 += q[0] * s0
+			x1 += p[1] * c1
+			y1 += q[1] * s1
+			c0, c2 = t*c0-c2, c0
+			s0, s2 = t*s0-s2, s0
+			c1, c3 = t*c1-c3, c1
+			s1, s3 = t*s1-s3, s1
+			p, q = p[2:], q[2:]
+		}
+		if len(p) > 0 {
+			x0 += p[0] * c0
+			y0 += q[0] * s0
+		}
+		cosines += x0 + x1
+		sines += y0 + y1
+	}
+	return cosines, sines
 }
 
 // Subtract removes fitted tones from x in place; amplitudes as FitTones gives them.
@@ -132,14 +162,30 @@ func Subtract(x []float64, w []float64, a []complex128) {
 		if a[k] == 0 {
 			continue
 		}
-		stepIm, stepRe := math.Sincos(w[k])
-		for start := 0; start < len(x); start += dtftBlock {
-			end := min(start+dtftBlock, len(x))
-			p := a[k] * cmplx.Exp(complex(0, w[k]*(float64(start)-middle)))
-			re, im := real(p), imag(p)
-			for n := start; n < end; n++ {
-				x[n] -= re
-				re, im = re*stepRe-im*stepIm, re*stepIm+im*stepRe
+		// Re(a·exp(iwn)) obeys y[n] = 2·cos(w)·y[n−1] − y[n−2]; four chains of every fourth
+		// sample keep the processor busy, and each block starts exactly.
+		c := 2 * math.Cos(4*w[k])
+		size, phase := cmplx.Abs(a[k]), cmplx.Phase(a[k])
+		at := func(n int) float64 { return size * math.Cos(w[k]*(float64(n)-middle)+phase) }
+		for start := 0; start < len(x); start += chebyshevBlock {
+			b := x[start:min(start+chebyshevBlock, len(x))]
+			p0, p1, p2, p3 := at(start-4), at(start-3), at(start-2), at(start-1)
+			y0, y1, y2, y3 := at(start), at(start+1), at(start+2), at(start+3)
+			for len(b) >= 4 {
+				b[0] -= y0
+				b[1] -= y1
+				b[2] -= y2
+				b[3] -= y3
+				y0, p0 = c*y0-p0, y0
+				y1, p1 = c*y1-p1, y1
+				y2, p2 = c*y2-p2, y2
+				y3, p3 = c*y3-p3, y3
+				b = b[4:]
+			}
+			for i, y := range []float64{y0, y1, y2} {
+				if i < len(b) {
+					b[i] -= y
+				}
 			}
 		}
 	}
@@ -213,7 +259,7 @@ func angular(rate, clock float64, drivenHz, fixedHz []float64) []float64 {
 func clockStep(x []float64, rate float64, drivenHz, fixedHz []float64, clock float64) (step, sigma float64, err error) {
 	half := len(x) / 2
 	w := angular(rate, clock, drivenHz, fixedHz)
-	first, err := FitTones(x[:half], w)
+	first, explained, err := fitTones(x[:half], w)
 	if err != nil {
 		return 0, 0, err
 	}
@@ -236,10 +282,7 @@ func clockStep(x []float64, rate float64, drivenHz, fixedHz []float64, clock flo
 	}
 	step = top / weight / float64(half)
 	// The scatter comes from the record itself: what the halves leave unexplained.
-	rest := append([]float64(nil), x[:half]...)
-	Subtract(rest, w, first)
-	removeMean(rest)
-	variance := meanSquare(rest) // of the noise, per sample, white at worst
+	variance := math.Max(0, meanSquare(x[:half])-explained/float64(half)) // of the noise, per sample, white at worst
 	sigma = math.Sqrt(2*variance*2/float64(half)/weight) / float64(half)
 	return step, sigma, nil
 }

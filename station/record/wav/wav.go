@@ -6,6 +6,7 @@ import (
 	"encoding/binary"
 	"fmt"
 	"math"
+	"sync"
 )
 
 // Format is how samples are stored.
@@ -52,7 +53,7 @@ func Decode(file string, data []byte, channels []int) (Format, [][]float64, erro
 		if c < 1 || c > f.Channels {
 			return f, nil, &Error{file, 0, fmt.Sprintf("it has %d channels and channel %d was asked for", f.Channels, c), "correct the channel under inputs"}
 		}
-		out[i] = make([]float64, frames)
+		out[i] = Buffer(frames)
 		at := start + (c-1)*f.Bits/8
 		if bad := decode(out[i], data[at:start+size], width, f); bad >= 0 {
 			return f, nil, &Error{file, start + bad*width, "a sample is not a number", "record it again"}
@@ -60,6 +61,20 @@ func Decode(file string, data []byte, channels []int) (Format, [][]float64, erro
 	}
 	return f, out, nil
 }
+
+// buffers are samples that were given back.
+var buffers sync.Pool
+
+// Buffer gives a slice of n samples of any content, one that was given back where there is one.
+func Buffer(n int) []float64 {
+	if b, ok := buffers.Get().(*[]float64); ok && cap(*b) >= n {
+		return (*b)[:n]
+	}
+	return make([]float64, n)
+}
+
+// GiveBack lets samples be used again; the caller must hold no other reference to them.
+func GiveBack(b []float64) { buffers.Put(&b) }
 
 // decode fills out from interleaved data and gives the index of a sample that is not a
 // finite number, −1 if all are.
@@ -80,6 +95,13 @@ func decode(out []float64, data []byte, width int, f Format) int {
 			out[i] = float64(int16(binary.LittleEndian.Uint16(data[at:]))) * (1.0 / (1 << 15))
 			at += width
 		}
+	case f.Bits == 24 && width == 3:
+		last := len(out) - 1 // four bytes are read for each three, which the last has not
+		for i := 0; i < last; i++ {
+			out[i] = float64(int32(binary.LittleEndian.Uint32(data[3*i:])<<8)) * (1.0 / (1 << 31))
+		}
+		b := data[3*last:]
+		out[last] = float64(int32(uint32(b[0])<<8|uint32(b[1])<<16|uint32(b[2])<<24)) * (1.0 / (1 << 31))
 	case f.Bits == 24:
 		for i := range out {
 			b := data[at : at+3 : at+3]
