@@ -282,16 +282,16 @@ func (m *NoiseFloor) density(c *Capture, n, floor *noiseSpectrum, at quantity.Fr
 	return m.root(c, densitySuffix(at), "V/√Hz", total, f, floor != nil)
 }
 
-// mainsReading is the hum: where the lines do not stand out of the noise the reading is
-// small and its uncertainty says up to how much there may be.
+// mainsReading is the hum. The interval of its power (m ± k·u) is turned into one of its
+// effective value, whose middle is the reading: where the lines do not stand out of the noise,
+// the interval reaches down to zero and says up to how much there may be.
 func (m *NoiseFloor) mainsReading(c *Capture, n *noiseSpectrum) Reading {
 	r := Reading{Name: c.Step + ".mains", Unit: "V"}
-	power := math.Max(n.mains, 0)
-	r.Value = math.Sqrt(power)
 	k := CoverageFactor(0)
-	upper := math.Sqrt(power+k*n.mainsSigma) - r.Value
-	lower := r.Value - math.Sqrt(math.Max(power-k*n.mainsSigma, 0))
-	r.Budget = Combine(append([]Component{{"noise under the mains lines", math.Max(upper, lower) / k, 0}}, c.levelComponents(IF, r.Value)...)...)
+	high := math.Sqrt(math.Max(n.mains+k*n.mainsSigma, 0.1*n.mainsSigma))
+	low := math.Sqrt(math.Max(n.mains-k*n.mainsSigma, 0))
+	r.Value = (low + high) / 2
+	r.Budget = Combine(append([]Component{{"noise under the mains lines", (high - low) / 2 / k, 0}}, c.levelComponents(IF, r.Value)...)...)
 	if n.mains < 2*n.mainsSigma {
 		r.Notes = append(r.Notes, "the mains lines do not stand out of the noise")
 	}

@@ -35,6 +35,9 @@ func gapMask(s Spectrum, gaps []Gap) []bool {
 func BandPower(s Spectrum, lowHz, highHz float64, gaps []Gap) Estimate {
 	first := max(1, int(lowHz/s.Step))
 	last := min(len(s.Power)-1, int(highHz/s.Step)+1)
+	if len(gaps) == 0 {
+		return bandPower(s, first, last, func(k int) float64 { return lineShare(float64(k)*s.Step, s.Step, lowHz, highHz) })
+	}
 	weight := make([]float64, len(s.Power))
 	for k := first; k <= last; k++ {
 		weight[k] = 1
@@ -44,11 +47,15 @@ func BandPower(s Spectrum, lowHz, highHz float64, gaps []Gap) Estimate {
 			weight[k] = lineShare(float64(k)*s.Step, s.Step, lowHz, highHz)
 		}
 	}
-	if mask := gapMask(s, gaps); mask != nil {
-		fillGaps(weight, mask, first, last)
-	}
+	fillGaps(weight, gapMask(s, gaps), first, last)
+	return bandPower(s, 1, len(weight)-1, func(k int) float64 { return weight[k] })
+}
+
+// bandPower sums lines by their weights.
+func bandPower(s Spectrum, first, last int, weight func(k int) float64) Estimate {
 	sum, variance := 0.0, 0.0
-	for k, g := range weight {
+	for k := first; k <= last; k++ {
+		g := weight(k)
 		if g == 0 {
 			continue
 		}

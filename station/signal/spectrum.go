@@ -59,9 +59,9 @@ func Periodogram(x []float64, rate float64) Spectrum {
 // Segments gives the power of a record in overlapping pieces: Welch's method (P.D.
 // Welch, IEEE Trans. AU-15 (1967) 70) before the mean is taken, Hann window, 50 %
 // overlap, so that a piece that is unlike the others can be seen. The result holds
-// one power density per piece.
+// one power density per piece. A piece's length is the power of two nearest to that asked for.
 func Segments(x []float64, rate, seconds float64) []Spectrum {
-	n := smoothLength(int(seconds * rate))
+	n := 1 << max(0, int(math.Round(math.Log2(seconds*rate))))
 	if n < 8 || n > len(x) {
 		return nil
 	}
