@@ -127,13 +127,15 @@ func (r *Runner) attempt(ctx context.Context, u Unit) (a *record.Attempt, err er
 	return a, err
 }
 
+const stoppedText = "it was stopped by the operator"
+
 func firstLine(err error) string {
 	var fault *fixtures.Fault
 	switch {
 	case errors.As(err, &fault):
 		return fault.Error()
 	case errors.Is(err, context.Canceled):
-		return "it was stopped by the operator"
+		return stoppedText
 	case errors.Is(err, context.DeadlineExceeded):
 		return "it took too long"
 	}
@@ -155,7 +157,7 @@ func (r *Runner) begin(u Unit) *record.Attempt {
 // overdue notes the state of all calibrations, and refuses to go on with one overdue
 // unless the plan allows it.
 func (r *Runner) overdue(a *record.Attempt) error {
-	for _, c := range r.File.Calibrations(r.Clock.Now()) {
+	for _, c := range r.calibrations() {
 		k := record.Calibration{What: c.What, Value: c.Value, Unit: c.Unit.Symbol, Uncertainty: 2 * c.Uncertainty.Standard(c.Value) * c.Value, Overdue: c.Overdue}
 		if !c.Date.IsZero() {
 			k.Date = c.Date.Format(time.DateOnly)
@@ -173,6 +175,14 @@ func (r *Runner) overdue(a *record.Attempt) error {
 		a.Warnings = append(a.Warnings, fmt.Sprintf("the calibration of %s was due on %s", c.What, k.Due))
 	}
 	return nil
+}
+
+// calibrations are those of the station file, or what a virtual bench states of itself.
+func (r *Runner) calibrations() []attach.CalibrationState {
+	if r.Setup.Virtual {
+		return r.Setup.Calibrations()
+	}
+	return r.File.Calibrations(r.Clock.Now())
 }
 
 // emit tells and records an event.

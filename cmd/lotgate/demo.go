@@ -61,6 +61,26 @@ func freeFolder(asked string) (string, error) {
 	}
 }
 
+// again says how often something was taken again.
+func again(attempts []*record.Attempt) string {
+	taken := 0
+	for _, a := range attempts {
+		for _, e := range a.Events {
+			if e.Kind == "void" {
+				taken++
+			}
+		}
+	}
+	text := ""
+	if n := len(attempts); n > 1 {
+		text = fmt.Sprintf(" (attempt %d)", n)
+	}
+	if taken > 0 {
+		text += fmt.Sprintf(" (%d disturbed acquisition taken again)", taken)
+	}
+	return text
+}
+
 const demoLot = "DEMO-0001"
 
 // screen tests a whole lot and prints what a quality engineer wants to see of it.
@@ -98,10 +118,7 @@ func (a *app) screen(ctx context.Context, dir string, units, seed int) (err erro
 		}
 		bar.clear()
 		last := attempts[len(attempts)-1]
-		more := ""
-		if n := len(attempts); n > 1 {
-			more = fmt.Sprintf(" (attempt %d)", n)
-		}
+		more := again(attempts)
 		fmt.Fprintf(a.out, "%s  %s%s  %s\n", signed(a.out, last.Verdict, 8), serial, more, last.Reason)
 	}
 	summary, err := station.Summarise(ctx, b.store, demoLot)

@@ -157,5 +157,8 @@ func (s *session) unit(ctx context.Context, serial string, bar *bar) error {
 	if n := len(attempts); n > 0 {
 		s.verdict(attempts[n-1].Verdict)
 	}
+	if errors.Is(runErr, context.Canceled) {
+		return errors.New("stopped by the operator")
+	}
 	return runErr
 }
