@@ -208,18 +208,21 @@ func (m *Sensitivity) fit(c *Capture, part int, position, tone float64) (toneFit
 	}
 	spectrum := signal.Periodogram(fit.Residual, d.Rate)
 	seconds := float64(len(d.Samples)) / d.Rate
-	if v := steady(fit.Residual, d.Rate, 2*8/seconds, math.Min(16*tone, 0.4*d.Rate), seconds/8); v != nil {
-		return toneFit{}, v, nil
-	}
 	out := toneFit{position: position}
 	for k := range driven {
 		noise := localNoise(spectrum, fit.FrequencyHz[k], fit.FrequencyHz, 0, 16)
 		if k == 0 {
-			if v := unbroken(spectrum, fit.FrequencyHz[0], noise.Value); v != nil {
+			// A phase that steps spreads the tone to the lines beside it: they are held against
+			// the noise further off.
+			off := localNoise(spectrum, 1.6*fit.FrequencyHz[0], fit.FrequencyHz, 0, 16)
+			if v := unbroken(spectrum, fit.FrequencyHz[0], math.Min(noise.Value, off.Value)); v != nil {
 				return toneFit{}, v, nil
 			}
 		}
 		out.harmonics = append(out.harmonics, harmonic{fit.Amplitude[k] * complex(volts, 0), math.Sqrt(noise.Value/seconds) * volts, noise.Dof})
+	}
+	if v := steady(fit.Residual, d.Rate, 2*8/seconds, math.Min(16*tone, 0.4*d.Rate), seconds/8); v != nil {
+		return toneFit{}, v, nil
 	}
 	return out, nil, nil
 }

@@ -62,7 +62,7 @@ func FindUnsteady(pieces []Spectrum, lowHz, highHz float64) (worst Unsteady, ok 
 // Health is what a raw record looks like before anything is made of it.
 type Health struct {
 	AtFullScale int     // samples at or beyond full scale
-	StepRMS     float64 // effective value of the steps from sample to sample, fraction of full scale
+	StepRMS     float64 // effective value of white noise that has the record's third differences, fraction of full scale
 	GapStart    float64 // s; where the first gap is, −1 for none
 	GapSeconds  float64
 }
@@ -71,9 +71,10 @@ type Health struct {
 // below their nominal full scale.
 const fullScaleShare = 0.9995
 
-// gapShare is how far the power of the sample-to-sample steps of a 4 ms piece must fall
-// below the median piece's to be a gap filled with silence. For noise of 32 independent
-// samples the chance is below 1e-19 a piece (χ² with 32 degrees of freedom).
+// gapShare is how far the power of the third differences of a 4 ms piece must fall
+// below the median piece's to be a gap filled with silence. Third differences take slow tones
+// out, whose turning points would look silent. For noise of 32 samples the chance is
+// below 1e-15 a piece.
 const gapShare = 0.01
 
 // Look passes once over a raw record: overload, silence, and gaps that the sound
@@ -85,13 +86,14 @@ func Look(x []float64, rate float64) Health {
 	}
 	block := max(32, int(rate/250))
 	steps := make([]float64, 0, len(x)/block)
-	previous, high, low, total := x[0], x[0], x[0], 0.0
+	a, b, c := x[0], x[0], x[0] // the three samples before
+	high, low, total := x[0], x[0], 0.0
 	for start := 0; start < len(x); start += block {
 		part := x[start:min(start+block, len(x))]
 		d2 := 0.0
 		for _, v := range part {
-			d := v - previous
-			previous = v
+			d := v - c + 3*(b-a)
+			a, b, c = v, a, b
 			d2 += d * d
 			if v > high {
 				high = v
@@ -104,7 +106,7 @@ func Look(x []float64, rate float64) Health {
 			steps = append(steps, d2)
 		}
 	}
-	h.StepRMS = math.Sqrt(total / float64(len(x)))
+	h.StepRMS = math.Sqrt(total / float64(len(x)) / 20)
 	if high >= fullScaleShare || low <= -fullScaleShare {
 		for _, v := range x {
 			if math.Abs(v) >= fullScaleShare {
