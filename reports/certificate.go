@@ -161,11 +161,11 @@ func (r Row) valueText() string {
 func (r Row) limitsText() string {
 	switch {
 	case r.Lower != nil && r.Upper != nil:
-		return minus(quantity.Print(*r.Lower, r.unit()) + " … " + quantity.Print(*r.Upper, r.unit()))
+		return minus(r.bound(*r.Lower) + " … " + r.bound(*r.Upper))
 	case r.Upper != nil:
-		return minus("at most " + quantity.Print(*r.Upper, r.unit()))
+		return minus("at most " + r.bound(*r.Upper))
 	case r.Lower != nil:
-		return minus("at least " + quantity.Print(*r.Lower, r.unit()))
+		return minus("at least " + r.bound(*r.Lower))
 	}
 	return "no limits"
 }
@@ -236,4 +236,13 @@ func inside(p chart.ResponsePoint) quantity.Decibel {
 		return p.Level - *p.Lower
 	}
 	return min(*p.Upper-p.Level, p.Level-*p.Lower)
+}
+
+// bound prints a limit; one that was read off a mask between two corners in hundredths of
+// a dB.
+func (r Row) bound(v float64) string {
+	if r.Curve {
+		v = math.Round(v*100) / 100
+	}
+	return quantity.Print(v, r.unit())
 }
