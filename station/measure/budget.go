@@ -2,6 +2,7 @@ package measure
 
 import (
 	"math"
+	"sync"
 
 	"gonum.org/v1/gonum/stat/distuv"
 )
@@ -51,10 +52,24 @@ func Combine(components ...Component) Budget {
 
 // CoverageFactor is the k that gives 95 % at so many degrees of freedom (0 stands
 // for infinitely many): 1.960 for a normal distribution, Student's t otherwise. The
-// degrees of freedom are not truncated to a whole number (GUM G.4.1 allows both).
+// degrees of freedom are not truncated to a whole number (GUM G.4.1 allows both), but
+// taken to three digits, which changes k by less than one part in a thousand.
 func CoverageFactor(dof float64) float64 {
 	if dof <= 0 || dof > 1e6 {
-		return distuv.UnitNormal.Quantile(0.5 + Coverage/2)
+		return normalFactor
 	}
-	return distuv.StudentsT{Mu: 0, Sigma: 1, Nu: dof}.Quantile(0.5 + Coverage/2)
+	size := math.Pow10(int(math.Floor(math.Log10(dof))) - 2)
+	dof = math.Round(dof/size) * size
+	if k, ok := factors.Load(dof); ok {
+		return k.(float64)
+	}
+	k := distuv.StudentsT{Mu: 0, Sigma: 1, Nu: dof}.Quantile(0.5 + Coverage/2)
+	factors.Store(dof, k)
+	return k
 }
+
+var (
+	normalFactor = distuv.UnitNormal.Quantile(0.5 + Coverage/2)
+	// factors keeps those worked out before: a response asks for dozens.
+	factors sync.Map // float64 → float64
+)

@@ -172,11 +172,12 @@ func (m *NoiseFloor) withoutMains(x []float64, rate, low, high float64) *noiseSp
 	n := &noiseSpectrum{}
 	mains := float64(m.Mains)
 	var found []float64
+	quiet := quietLines(raw, nil, mains)
 	for h := 1.0; h*mains <= math.Min(1.2*high, 0.48*rate); h++ {
 		hz := h * mains
 		width := mainsHalfWidth(h)
 		n.gaps = append(n.gaps, signal.Gap{LowHz: hz - width, HighHz: hz + width})
-		level := localNoise(raw, hz, nil, mains, 24)
+		level := localNoise(raw, quiet, hz, 24)
 		peak, at := 0.0, 0
 		for k := raw.Line(hz - width); k <= raw.Line(hz+width) && k < len(raw.Power); k++ {
 			if raw.Power[k] > peak {

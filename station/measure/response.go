@@ -238,6 +238,7 @@ func (m *Response) fromMultitone(c *Capture, part int, tones []Tone) ([]toneLeve
 		return nil, v, nil
 	}
 	spectrum := signal.Periodogram(fit.Residual, d.Rate)
+	quiet := quietLines(spectrum, fit.FrequencyHz, 0)
 	pi0 := 1.0
 	for _, t := range tones {
 		pi0 *= math.J0(phaseIndex(float64(t.Displacement), c.Carrier))
@@ -245,7 +246,7 @@ func (m *Response) fromMultitone(c *Capture, part int, tones []Tone) ([]toneLeve
 	out := make([]toneLevel, len(tones))
 	for i, t := range tones {
 		beta := phaseIndex(float64(t.Displacement), c.Carrier)
-		noise := localNoise(spectrum, driven[i], fit.FrequencyHz, 0, 14)
+		noise := localNoise(spectrum, quiet, driven[i], 14)
 		if v := unbroken(spectrum, fit.FrequencyHz[i], noise.Value*6); len(tones) == 1 && v != nil {
 			return nil, v, nil
 		}

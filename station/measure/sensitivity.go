@@ -208,13 +208,14 @@ func (m *Sensitivity) fit(c *Capture, part int, position, tone float64) (toneFit
 	}
 	spectrum := signal.Periodogram(fit.Residual, d.Rate)
 	seconds := float64(len(d.Samples)) / d.Rate
+	quiet := quietLines(spectrum, fit.FrequencyHz, 0)
 	out := toneFit{position: position}
 	for k := range driven {
-		noise := localNoise(spectrum, fit.FrequencyHz[k], fit.FrequencyHz, 0, 16)
+		noise := localNoise(spectrum, quiet, fit.FrequencyHz[k], 16)
 		if k == 0 {
 			// A phase that steps spreads the tone to the lines beside it: they are held against
 			// the noise further off.
-			off := localNoise(spectrum, 1.6*fit.FrequencyHz[0], fit.FrequencyHz, 0, 16)
+			off := localNoise(spectrum, quiet, 1.6*fit.FrequencyHz[0], 16)
 			if v := unbroken(spectrum, fit.FrequencyHz[0], math.Min(noise.Value, off.Value)); v != nil {
 				return toneFit{}, v, nil
 			}

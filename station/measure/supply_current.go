@@ -96,7 +96,7 @@ func (m *SupplyCurrent) Evaluate(c *Capture) (Result, error) {
 	}
 	a1, a3 := cmplx.Abs(fit.Amplitude[0]), cmplx.Abs(fit.Amplitude[2])
 	spectrum := signal.Periodogram(fit.Residual, d.Rate)
-	noise := localNoise(spectrum, fit.FrequencyHz[0], fit.FrequencyHz, 0, 12)
+	noise := localNoise(spectrum, quietLines(spectrum, fit.FrequencyHz, 0), fit.FrequencyHz[0], 12)
 	sigma := math.Sqrt(noise.Value * d.Rate / float64(len(d.Samples)))
 	if v := chopperVoid(a1, a3, sigma, chop, fit.FrequencyHz[0]); v != nil {
 		return voidAll(c.Step, m.Readings(), v), nil

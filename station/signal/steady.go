@@ -3,6 +3,7 @@ package signal
 import (
 	"math"
 	"sort"
+	"sync"
 
 	"gonum.org/v1/gonum/stat/distuv"
 )
@@ -47,8 +48,7 @@ func FindUnsteady(pieces []Spectrum, lowHz, highHz float64) (worst Unsteady, ok 
 		sorted := append([]float64(nil), power...)
 		sort.Float64s(sorted)
 		median := sorted[len(sorted)/2]
-		chi := distuv.ChiSquared{K: dof}
-		bound := chi.Quantile(1-falseAlarm) / chi.Quantile(0.5) * 1.3 // the median's own scatter
+		bound := steadyBound(dof)
 		for i, v := range power {
 			if ratio := v / median; median > 0 && ratio > bound && ratio/bound > over {
 				over = ratio / bound
@@ -57,6 +57,21 @@ func FindUnsteady(pieces []Spectrum, lowHz, highHz float64) (worst Unsteady, ok 
 		}
 	}
 	return worst, over == 0
+}
+
+// bounds keeps the bounds worked out before.
+var bounds sync.Map // float64 → float64
+
+// steadyBound is how far the strongest piece may stand above the median one, with room for
+// the median's own scatter.
+func steadyBound(dof float64) float64 {
+	if b, ok := bounds.Load(dof); ok {
+		return b.(float64)
+	}
+	chi := distuv.ChiSquared{K: dof}
+	b := chi.Quantile(1-falseAlarm) / chi.Quantile(0.5) * 1.3
+	bounds.Store(dof, b)
+	return b
 }
 
 // Health is what a raw record looks like before anything is made of it.
@@ -90,19 +105,37 @@ func Look(x []float64, rate float64) Health {
 	high, low, total := x[0], x[0], 0.0
 	for start := 0; start < len(x); start += block {
 		part := x[start:min(start+block, len(x))]
-		d2 := 0.0
-		for _, v := range part {
-			d := v - c + 3*(b-a)
-			a, b, c = v, a, b
-			d2 += d * d
+		full := len(part) == block
+		// Two samples at a time, with a sum of their own each: one sum would be waited for.
+		var even, odd float64
+		for len(part) >= 2 {
+			v, w := part[0], part[1]
+			d, e := v-c+3*(b-a), w-b+3*(a-v)
+			a, b, c = w, v, a
+			even += d * d
+			odd += e * e
 			if v > high {
 				high = v
 			} else if v < low {
 				low = v
 			}
+			if w > high {
+				high = w
+			} else if w < low {
+				low = w
+			}
+			part = part[2:]
 		}
+		if len(part) == 1 {
+			v := part[0]
+			d := v - c + 3*(b-a)
+			a, b, c = v, a, b
+			even += d * d
+			high, low = math.Max(high, v), math.Min(low, v)
+		}
+		d2 := even + odd
 		total += d2
-		if len(part) == block {
+		if full {
 			steps = append(steps, d2)
 		}
 	}

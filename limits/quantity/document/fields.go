@@ -3,6 +3,7 @@ package document
 import (
 	"reflect"
 	"strings"
+	"sync"
 )
 
 type field struct {
@@ -31,15 +32,27 @@ func fieldsOf(t reflect.Type) map[string]field {
 	return out
 }
 
+// known keeps the fields of types seen before: reading them is not free.
+var known sync.Map // reflect.Type → []field
+
 // orderedFields lists the tagged fields; an embedded struct's fields stand where
-// it is embedded.
+// it is embedded. The list must not be changed.
 func orderedFields(t reflect.Type) []field {
+	if list, ok := known.Load(t); ok {
+		return list.([]field)
+	}
+	list := readFields(t)
+	known.Store(t, list)
+	return list
+}
+
+func readFields(t reflect.Type) []field {
 	var out []field
 	for i := range t.NumField() {
 		sf := t.Field(i)
 		if sf.Anonymous && sf.Type.Kind() == reflect.Struct {
 			for _, f := range orderedFields(sf.Type) {
-				f.index = append([]int{i}, f.index...)
+				f.index = append([]int{i}, f.index...) // a copy: the list itself stays
 				out = append(out, f)
 			}
 			continue
