@@ -132,3 +132,18 @@ func BenchmarkReplay48k(b *testing.B) {
 		evaluateFolder(b, filepath.Join(captures, "good-48k"), l)
 	}
 }
+
+// BenchmarkEvaluate48k is the same folder without reading its files.
+func BenchmarkEvaluate48k(b *testing.B) {
+	l := readLimits(b)
+	f, err := record.ReadFolder(filepath.Join(captures, "good-48k"))
+	if err != nil {
+		b.Fatal(err)
+	}
+	b.ReportAllocs()
+	for b.Loop() {
+		if _, err := station.Evaluate(f.Captures, l); err != nil {
+			b.Fatal(err)
+		}
+	}
+}

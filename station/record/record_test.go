@@ -150,6 +150,30 @@ func TestYieldLogIsTheStore(t *testing.T) {
 	}
 }
 
+// TestSeveralAttemptsAtOnce: attempts saved together and filed afterwards stand in the log once each,
+// without a word about missing rows.
+func TestSeveralAttemptsAtOnce(t *testing.T) {
+	s := open(t)
+	y := YieldLog{s}
+	var list []*Attempt
+	for i := range 3 {
+		a := attempt("A", i, limits.Void)
+		if err := s.Save(context.Background(), a); err != nil {
+			t.Fatal(err)
+		}
+		list = append(list, a)
+	}
+	for _, a := range list {
+		if note, err := y.Append(context.Background(), a); note != "" || err != nil {
+			t.Errorf("%q, %v", note, err)
+		}
+	}
+	data, _ := os.ReadFile(y.Path("L/1"))
+	if rows, err := csv.NewReader(bytes.NewReader(data)).ReadAll(); err != nil || len(rows) != 4 {
+		t.Errorf("%d rows, %v", len(rows), err)
+	}
+}
+
 // TestTornYieldLogIsSetAside cuts the log at every byte of its last row: it is kept aside and
 // written again from the store.
 func TestTornYieldLogIsSetAside(t *testing.T) {

@@ -49,6 +49,9 @@ func (y YieldLog) Append(ctx context.Context, a *Attempt) (note string, err erro
 		}
 		return fmt.Sprintf("the yield log was torn: it is kept as %s and was written again from the store", aside), y.Rebuild(ctx, a.Lot)
 	}
+	if bytes.Contains(data, []byte("\r\n"+a.ID+",")) {
+		return "", nil // it came in when the log was written again after a later attempt
+	}
 	for _, r := range a.Readings {
 		if !r.Curve && !has(header, columnOf(r)) {
 			return "", y.Rebuild(ctx, a.Lot)
