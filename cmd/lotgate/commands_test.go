@@ -121,8 +121,8 @@ func TestVerify(t *testing.T) {
 	if status, out, _ := lotgate("", "verify", "--store", store, strings.ToLower(code)); status != statusPass || !strings.Contains(out, "unit A1") {
 		t.Errorf("%q: %d %s", code, status, out)
 	}
-	if status, out, _ := lotgate("", "verify", "--store", store, "AAAA-BBBB-CCCC-DDDD"); status != statusFail || !strings.Contains(out, "holds no attempt") {
-		t.Errorf("a made-up code: %d %s", status, out)
+	if status, _, errs := lotgate("", "verify", "--store", store, "AAAA-BBBB-CCCC-DDDD"); status != statusFail || !strings.Contains(errs, "holds no attempt") {
+		t.Errorf("a made-up code: %d %s", status, errs)
 	}
 }
 
@@ -135,6 +135,30 @@ func TestUnusableStores(t *testing.T) {
 	status, out, errs := lotgate("", testArgs(dir, "--serial", "A1")...)
 	if status != statusVoid || out != "" || !strings.Contains(errs, "the store's folder cannot be made") {
 		t.Errorf("%d %s%s", status, out, errs)
+	}
+}
+
+// TestJSONEverywhere: what reports also reports as JSON, nothing else on standard output.
+func TestJSONEverywhere(t *testing.T) {
+	dir := starterSet(t)
+	demo := filepath.Join(t.TempDir(), "demo")
+	for _, args := range [][]string{
+		{"demo", "--json", "--units", "2", "--out", demo},
+		{"explain", "--json", "--store", filepath.Join(demo, "store"), "D00001"},
+		{"verify", "--json", "--store", filepath.Join(demo, "store"), "D00001"},
+		{"plan", "show", "--json", filepath.Join(dir, "plan.yaml")},
+		{"devices", "--json"},
+	} {
+		status, out, errs := lotgate("", args...)
+		lines := strings.Split(strings.TrimSpace(out), "\n")
+		if status > statusFail || lines[0] == "" {
+			t.Errorf("%v: %d %s", args, status, errs)
+		}
+		for _, line := range lines {
+			if !json.Valid([]byte(line)) {
+				t.Errorf("%v printed %q", args, line)
+			}
+		}
 	}
 }
 

@@ -2,8 +2,10 @@ package main
 
 import (
 	"context"
+	"encoding/json"
 	"errors"
 	"fmt"
+	"io"
 	"os"
 	"path/filepath"
 	"strings"
@@ -19,6 +21,7 @@ import (
 func (a *app) demo() *cobra.Command {
 	var units, seed int
 	var out string
+	var asJSON bool
 	c := &cobra.Command{
 		Use:   "demo",
 		Short: "Screen a lot on the virtual bench, start to finish, without hardware",
@@ -27,6 +30,7 @@ func (a *app) demo() *cobra.Command {
 	c.Flags().IntVar(&units, "units", 40, "number of units in the lot")
 	c.Flags().IntVar(&seed, "seed", 7, "all chance comes from this number")
 	c.Flags().StringVar(&out, "out", "", "folder to make (default: lotgate-demo, with a number where it exists)")
+	c.Flags().BoolVar(&asJSON, "json", false, "print one JSON object for each unit, in SI units; the rest goes to standard error")
 	c.RunE = func(c *cobra.Command, _ []string) error {
 		if units < 1 || units > 100000 {
 			return misuse{fmt.Errorf("--units %d is not possible: write 1 to 100000", units)}
@@ -35,7 +39,11 @@ func (a *app) demo() *cobra.Command {
 		if err != nil {
 			return err
 		}
-		return a.screen(c.Context(), dir, units, seed)
+		text := *a
+		if asJSON {
+			text.out = a.err
+		}
+		return text.screen(c.Context(), dir, units, seed, asJSON, a.out)
 	}
 	return c
 }
@@ -84,7 +92,7 @@ func again(attempts []*record.Attempt) string {
 const demoLot = "DEMO-0001"
 
 // screen tests a whole lot and prints what a quality engineer wants to see of it.
-func (a *app) screen(ctx context.Context, dir string, units, seed int) (err error) {
+func (a *app) screen(ctx context.Context, dir string, units, seed int, asJSON bool, out io.Writer) (err error) {
 	if _, err := starter.Write(dir, nil); err != nil {
 		return err
 	}
@@ -118,6 +126,12 @@ func (a *app) screen(ctx context.Context, dir string, units, seed int) (err erro
 		}
 		bar.clear()
 		last := attempts[len(attempts)-1]
+		if asJSON {
+			if err := json.NewEncoder(out).Encode(unitOutput(last)); err != nil {
+				return err
+			}
+			continue
+		}
 		more := again(attempts)
 		fmt.Fprintf(a.out, "%s  %s%s  %s\n", signed(a.out, last.Verdict, 8), serial, more, last.Reason)
 	}

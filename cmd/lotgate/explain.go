@@ -2,6 +2,7 @@ package main
 
 import (
 	"context"
+	"encoding/json"
 	"errors"
 	"fmt"
 	"math"
@@ -18,6 +19,7 @@ import (
 
 func (a *app) explain() *cobra.Command {
 	var store, folder, limitsPath string
+	var asJSON bool
 	c := &cobra.Command{
 		Use:   "explain [SERIAL|ATTEMPT] [READING]",
 		Short: "Explain a reading: its uncertainty budget and how it came about",
@@ -29,19 +31,27 @@ one named by its identifier; --captures explains a capture folder instead.`,
 	c.Flags().StringVar(&store, "store", "store", "the store's folder")
 	c.Flags().StringVar(&folder, "captures", "", "explain this capture folder")
 	c.Flags().StringVar(&limitsPath, "limits", "", "with --captures: limits to judge by")
+	c.Flags().BoolVar(&asJSON, "json", false, "print one JSON object for each reading, in SI units")
 	c.RunE = func(c *cobra.Command, args []string) error {
+		show := a.explainReadings
+		if asJSON {
+			show = a.explainJSON
+		}
 		if folder != "" {
-			return a.explainFolder(folder, limitsPath, args)
+			return a.explainFolder(folder, limitsPath, args, show, asJSON)
 		}
 		if len(args) == 0 {
 			return misuse{errors.New("explain needs a serial number or an attempt's identifier, or --captures DIR")}
 		}
-		return a.explainStored(c.Context(), store, args)
+		return a.explainStored(c.Context(), store, args, show, asJSON)
 	}
 	return c
 }
 
-func (a *app) explainFolder(folder, limitsPath string, args []string) error {
+// shower shows readings, all or the one named.
+type shower func(readings []record.Judged, only string) error
+
+func (a *app) explainFolder(folder, limitsPath string, args []string, show shower, quiet bool) error {
 	f, err := record.ReadFolder(folder)
 	if err != nil {
 		return err
@@ -60,8 +70,10 @@ func (a *app) explainFolder(folder, limitsPath string, args []string) error {
 	if err != nil {
 		return err
 	}
-	fmt.Fprintf(a.out, "unit %s of lot %s, captures in %s\n", f.Serial, f.Lot, folder)
-	return a.explainReadings(e.Readings, reading(args, 0))
+	if !quiet {
+		fmt.Fprintf(a.out, "unit %s of lot %s, captures in %s\n", f.Serial, f.Lot, folder)
+	}
+	return show(e.Readings, reading(args, 0))
 }
 
 func reading(args []string, i int) string {
@@ -71,7 +83,7 @@ func reading(args []string, i int) string {
 	return ""
 }
 
-func (a *app) explainStored(ctx context.Context, dir string, args []string) (err error) {
+func (a *app) explainStored(ctx context.Context, dir string, args []string, show shower, quiet bool) (err error) {
 	if _, err := os.Stat(dir); err != nil {
 		return fmt.Errorf("there is no store: %w: name its folder with --store", err)
 	}
@@ -84,9 +96,12 @@ func (a *app) explainStored(ctx context.Context, dir string, args []string) (err
 	if err != nil {
 		return err
 	}
+	if quiet {
+		return show(found.Readings, reading(args, 1))
+	}
 	fmt.Fprintf(a.out, "unit %s of lot %s, attempt %d (%s) at %s by %s\nplan %s revision %d, limits %s revision %d\n%s: %s\n", found.Serial, found.Lot, found.Number, found.ID,
 		found.Started.Format("2006-01-02 15:04:05 MST"), found.Operator, found.Plan, found.PlanRevision, found.Limits, found.LimitsRev, signed(a.out, found.Verdict, 0), found.Reason)
-	return a.explainReadings(found.Readings, reading(args, 1))
+	return show(found.Readings, reading(args, 1))
 }
 
 // lastAttempt finds an attempt by its identifier, or a unit's last one.
@@ -104,20 +119,36 @@ func lastAttempt(ctx context.Context, s *record.Store, name string) (*record.Att
 }
 
 func (a *app) explainReadings(readings []record.Judged, only string) error {
-	shown := 0
-	var names []string
-	for _, r := range readings {
-		names = append(names, r.Name)
-		if only != "" && r.Name != only {
-			continue
-		}
-		shown++
+	chosen, err := choose(readings, only)
+	for _, r := range chosen {
 		a.explainOne(r)
 	}
-	if shown == 0 {
-		return fmt.Errorf("there is no reading %q: one of %s", only, strings.Join(names, ", "))
+	return err
+}
+
+func (a *app) explainJSON(readings []record.Judged, only string) error {
+	chosen, err := choose(readings, only)
+	for _, r := range chosen {
+		if err := json.NewEncoder(a.out).Encode(r); err != nil {
+			return err
+		}
 	}
-	return nil
+	return err
+}
+
+// choose picks the reading named, or all.
+func choose(readings []record.Judged, only string) ([]record.Judged, error) {
+	if only == "" {
+		return readings, nil
+	}
+	var names []string
+	for _, r := range readings {
+		if r.Name == only {
+			return []record.Judged{r}, nil
+		}
+		names = append(names, r.Name)
+	}
+	return nil, fmt.Errorf("there is no reading %q: one of %s", only, strings.Join(names, ", "))
 }
 
 func (a *app) explainOne(r record.Judged) {

@@ -108,6 +108,11 @@ func (s *session) run(ctx context.Context, only string) error {
 	}
 }
 
+// unitOutput is an attempt in the form of --json.
+func unitOutput(at *record.Attempt) station.UnitOutput {
+	return station.UnitOutput{Lot: at.Lot, Serial: at.Serial, Attempt: at.ID, Number: at.Number, Verdict: at.Verdict, Reason: at.Reason, Readings: station.Output(at.Readings)}
+}
+
 // longestSerial is the longest serial number taken, in characters.
 const longestSerial = 100
 
@@ -137,7 +142,7 @@ func (s *session) unit(ctx context.Context, serial string, bar *bar) error {
 	for _, at := range attempts {
 		certificate, notes, err := station.Finish(context.WithoutCancel(ctx), s.bench.store, at, s.bench.limits)
 		if s.json {
-			if err := json.NewEncoder(s.out).Encode(station.UnitOutput{Lot: at.Lot, Serial: at.Serial, Attempt: at.ID, Number: at.Number, Verdict: at.Verdict, Reason: at.Reason, Readings: station.Output(at.Readings)}); err != nil {
+			if err := json.NewEncoder(s.out).Encode(unitOutput(at)); err != nil {
 				return err
 			}
 		} else {
