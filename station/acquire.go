@@ -5,10 +5,12 @@ import (
 	"errors"
 	"fmt"
 	"math"
+	"slices"
 	"time"
 
 	"lotgate/fixtures"
 	"lotgate/limits/quantity"
+	"lotgate/limits/quantity/curve"
 	"lotgate/limits/quantity/tolerance"
 	"lotgate/station/measure"
 	"lotgate/station/plan"
@@ -202,6 +204,12 @@ func (r *Runner) calibrate(c *measure.Capture, schedule measure.Schedule) {
 		in := r.Setup.Inputs[q.Role]
 		c.Inputs[q.Role], c.FullScale[q.Role] = in.Channel, in.FullScale
 		c.Uncertainty["full_scale"] = in.FullScaleU
+		if len(in.Response) > 0 {
+			if c.Response == nil {
+				c.Response = map[string]curve.Curve[quantity.Ratio]{}
+			}
+			c.Response[q.Role] = in.Response
+		}
 		if q.Role == measure.IF {
 			c.Gain[q.Role] = in.Gain
 			if in.GainU != nil {
@@ -209,16 +217,48 @@ func (r *Runner) calibrate(c *measure.Capture, schedule measure.Schedule) {
 			}
 		}
 		if q.Chop && r.Setup.Shunt != nil {
-			sh := r.Setup.Shunt
-			c.Shunt = &measure.Shunt{Resistance: sh.Resistance, Gain: sh.Gain, Chop: sh.Chop}
-			c.Uncertainty["shunt"] = sh.ResistanceU
+			r.calibrateShunt(c)
 		}
 	}
 	if c.Target != nil {
-		t := r.Setup.Target
-		c.Uncertainty["displacement"], c.Uncertainty["standoff"] = t.Displacement, t.StandoffU
-		if t.Shape != nil {
-			c.Uncertainty["shape"] = *t.Shape
+		r.calibrateTarget(c)
+	}
+}
+
+func (r *Runner) calibrateShunt(c *measure.Capture) {
+	sh := r.Setup.Shunt
+	c.Shunt = &measure.Shunt{Resistance: sh.Resistance, Gain: sh.Gain, Chop: sh.Chop, Offset: sh.Offset}
+	c.Uncertainty["shunt"] = sh.ResistanceU
+	if sh.OffsetU > 0 {
+		c.Uncertainty["offset"] = tolerance.Tolerance{Absolute: float64(sh.OffsetU), Unit: quantity.Ampere.Symbol}
+	}
+	if sh.ThroughInput {
+		delete(c.Uncertainty, "full_scale") // what the shunt was read with reads the unit: it cancels
+	}
+}
+
+func (r *Runner) calibrateTarget(c *measure.Capture) {
+	t := r.Setup.Target
+	c.Uncertainty["displacement"], c.Uncertainty["standoff"] = t.DisplacementU(c.Target.Tone), t.StandoffU
+	if t.Shape != nil {
+		c.Uncertainty["shape"] = *t.Shape
+	}
+	own := func(tone *measure.Tone) {
+		if _, u := t.Curve.At(tone.Frequency); u > 0 {
+			relative := tolerance.Percent(u)
+			tone.Uncertainty = &relative
+		}
+	}
+	c.Tones = slices.Clone(c.Tones)
+	for i := range c.Tones {
+		own(&c.Tones[i])
+	}
+	c.Parts = slices.Clone(c.Parts)
+	for i, p := range c.Parts {
+		if p.Tone != nil {
+			tone := *p.Tone
+			own(&tone)
+			c.Parts[i].Tone = &tone
 		}
 	}
 }

@@ -56,7 +56,7 @@ func certificate(a *record.Attempt, l *limits.File) reports.Certificate {
 		row.Simple = judged && limit.Decision == limits.Simple
 		c.Rows = append(c.Rows, row)
 		if len(r.Points) > 1 && c.Response == nil {
-			c.Response = curve(r, limit)
+			c.Response = curveOf(r, limit)
 		}
 	}
 	for _, f := range a.Figures {
@@ -77,7 +77,7 @@ func source(a *record.Attempt, kind, name string, revision int) reports.Source {
 	return s
 }
 
-func curve(r record.Judged, limit limits.Limit) *chart.Curve {
+func curveOf(r record.Judged, limit limits.Limit) *chart.Curve {
 	c := &chart.Curve{Mask: limit.Mask}
 	bound := func(v *float64) *quantity.Decibel {
 		if v == nil {

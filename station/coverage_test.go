@@ -60,7 +60,7 @@ func measureOne(t testing.TB, seed int) (*record.Attempt, virtual.Truth) {
 	}
 	f := &attach.File{Station: "test", Nest: "1"}
 	kept := &memory{}
-	r := &station.Runner{File: f, Setup: f.Setup(bench), Bench: bench.Fixtures(), Plan: p, Limits: &limits.File{Readings: map[string]limits.Limit{}},
+	r := &station.Runner{File: f, Setup: setupOf(t, f, bench), Bench: bench.Fixtures(), Plan: p, Limits: &limits.File{Readings: map[string]limits.Limit{}},
 		Store: kept, Clock: station.FastClock{}}
 	if _, err := r.Run(context.Background(), station.Unit{Lot: "lot", Serial: "unit", Operator: "test"}); err != nil {
 		t.Fatal(err)

@@ -157,8 +157,8 @@ func (r *Runner) begin(u Unit) *record.Attempt {
 // overdue notes the state of all calibrations, and refuses to go on with one overdue
 // unless the plan allows it.
 func (r *Runner) overdue(a *record.Attempt) error {
-	for _, c := range r.calibrations() {
-		k := record.Calibration{What: c.What, Value: c.Value, Unit: c.Unit.Symbol, Uncertainty: 2 * c.Uncertainty.Standard(c.Value) * c.Value, Overdue: c.Overdue}
+	for _, c := range r.Setup.States {
+		k := record.Calibration{What: c.What, Value: c.Value, Unit: c.Unit.Symbol, Uncertainty: 2 * c.Uncertainty.Standard(c.Value) * c.Value, Overdue: c.Overdue(r.Clock.Now())}
 		if !c.Date.IsZero() {
 			k.Date = c.Date.Format(time.DateOnly)
 		}
@@ -166,7 +166,7 @@ func (r *Runner) overdue(a *record.Attempt) error {
 			k.Due = c.Due.Format(time.DateOnly)
 		}
 		a.Calibrations = append(a.Calibrations, k)
-		if !c.Overdue {
+		if !k.Overdue {
 			continue
 		}
 		if !r.Plan.AllowOverdue {
@@ -175,14 +175,6 @@ func (r *Runner) overdue(a *record.Attempt) error {
 		a.Warnings = append(a.Warnings, fmt.Sprintf("the calibration of %s was due on %s", c.What, k.Due))
 	}
 	return nil
-}
-
-// calibrations are those of the station file, or what a virtual bench states of itself.
-func (r *Runner) calibrations() []attach.CalibrationState {
-	if r.Setup.Virtual {
-		return r.Setup.Calibrations()
-	}
-	return r.File.Calibrations(r.Clock.Now())
 }
 
 // emit tells and records an event.

@@ -14,6 +14,7 @@ import (
 	"lotgate/fixtures/attach"
 	"lotgate/fixtures/virtual"
 	"lotgate/limits"
+	"lotgate/limits/quantity"
 	"lotgate/station"
 	"lotgate/station/plan"
 	"lotgate/station/record"
@@ -58,7 +59,7 @@ func ideal(t *testing.T, planText, limitsText string) (*station.Runner, *virtual
 	}
 	kept := &memory{}
 	f := &attach.File{Station: "test", Nest: "1"}
-	return &station.Runner{File: f, Setup: f.Setup(bench), Bench: bench.Fixtures(), Plan: p, Limits: l, Store: kept, Clock: station.FastClock{}}, bench, kept
+	return &station.Runner{File: f, Setup: setupOf(t, f, bench), Bench: bench.Fixtures(), Plan: p, Limits: l, Store: kept, Clock: station.FastClock{}}, bench, kept
 }
 
 var unit = station.Unit{Lot: "lot", Serial: "unit", Operator: "test"}
@@ -199,11 +200,8 @@ func TestOpenLidIsNeverPowered(t *testing.T) {
 
 func TestOverdueCalibrationStopsProduction(t *testing.T) {
 	r, _, _ := ideal(t, shortPlan, shortLimits)
-	day := func(s string) attach.Day { d, _ := time.Parse(time.DateOnly, s); return attach.Day{Time: d} }
-	r.Setup.Virtual = false
-	in := attach.Input{Channel: 1}
-	in.FullScale.Value, in.FullScale.Due = 1, day("2026-01-31")
-	r.File.Inputs = map[string]attach.Input{"if": in}
+	day := func(s string) time.Time { d, _ := time.Parse(time.DateOnly, s); return d }
+	r.Setup.States = []attach.CalibrationState{{What: "full scale of input if", Value: 1, Unit: quantity.Volt, Due: day("2026-01-31")}}
 	for _, c := range []struct {
 		today   string
 		allowed bool
@@ -291,4 +289,13 @@ func TestKeptCapturesReplayAlike(t *testing.T) {
 	if found != code {
 		t.Errorf("code %s, from the store %s", code, found)
 	}
+}
+
+func setupOf(t testing.TB, f *attach.File, bench *virtual.Bench) attach.Setup {
+	t.Helper()
+	s, err := f.Setup(bench)
+	if err != nil {
+		t.Fatal(err)
+	}
+	return s
 }

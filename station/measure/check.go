@@ -4,6 +4,7 @@ import (
 	"fmt"
 	"math"
 
+	"lotgate/limits/quantity"
 	"lotgate/station/signal"
 )
 
@@ -70,49 +71,6 @@ func clockVoid(clock float64) *Void {
 		"use one sound interface for both, at its own sample rate"}
 }
 
-// quietLines marks the lines of a residual that show noise: away from the tones that were
-// fitted (by 0.8 lines) and from the mains and its harmonics (by 1.5; 0 Hz for none).
-func quietLines(residual signal.Spectrum, tonesHz []float64, mainsHz float64) []bool {
-	quiet := make([]bool, len(residual.Power))
-	for k := 2; k < len(quiet)-1; k++ {
-		quiet[k] = true
-	}
-	loud := func(hz, lines float64) {
-		at := hz / residual.Step
-		for k := max(0, int(math.Ceil(at-lines))); k < len(quiet) && float64(k) < at+lines; k++ {
-			quiet[k] = false
-		}
-	}
-	for _, hz := range tonesHz {
-		loud(hz, 0.8)
-	}
-	for hz := mainsHz; mainsHz > 0 && hz < float64(len(quiet))*residual.Step; hz += mainsHz {
-		loud(hz, 1.5)
-	}
-	return quiet
-}
-
-// localNoise is the power density of a residual around a frequency: mean over the quiet lines
-// within about a sixth of an octave to either side, or so many further that there are want of
-// them. Scatter and degrees of freedom come with it.
-func localNoise(residual signal.Spectrum, quiet []bool, hz float64, want int) signal.Estimate {
-	for half := math.Max(hz*0.12, 6*residual.Step); half < hz+float64(8*want)*residual.Step; half *= 1.3 {
-		sum, n := 0.0, 0
-		first := max(0, int(math.Ceil((hz-half)/residual.Step)))
-		last := min(len(quiet)-1, int((hz+half)/residual.Step))
-		for k := first; k <= last; k++ {
-			if quiet[k] {
-				sum += residual.Power[k]
-				n++
-			}
-		}
-		if n >= want {
-			return signal.Estimate{Value: sum / float64(n), Sigma: sum / float64(n) * math.Sqrt(residual.Spread/float64(n)), Dof: 2 * float64(n) / residual.Spread}
-		}
-	}
-	return signal.Estimate{}
-}
-
 func near(f float64, list []float64, distance float64) bool {
 	for _, t := range list {
 		if math.Abs(f-t) < distance {
@@ -156,13 +114,30 @@ func (c *Capture) volts(role string) (float64, error) {
 	return float64(fs) / gain, nil
 }
 
-// levelComponents are the calibrations every voltage reading carries, for a reading of
-// this value.
-func (c *Capture) levelComponents(role string, value float64) []Component {
+// gainAt is the gain over frequency between module and samples, over what full scale and
+// gain state, with its relative standard uncertainty.
+func (c *Capture) gainAt(role string, hz float64) (gain, relative float64) {
+	r := c.Response[role]
+	if len(r) == 0 {
+		return 1, 0
+	}
+	v, u := r.At(quantity.Frequency(hz))
+	return float64(v), u / 2
+}
+
+// levelComponents are the calibrations every voltage reading at a frequency carries, for a
+// reading of this value.
+func (c *Capture) levelComponents(role string, value, hz float64) []Component {
 	value = math.Abs(value)
-	out := []Component{{"full scale of the " + role + " input (calibration)", value * c.Uncertainty["full_scale"].Standard(float64(c.FullScale[role])), 0}}
+	var out []Component
+	if t, ok := c.Uncertainty["full_scale"]; ok || role != Sense {
+		out = append(out, Component{"full scale of the " + role + " input (calibration)", value * t.Standard(float64(c.FullScale[role])), 0})
+	}
 	if t, ok := c.Uncertainty["gain"]; ok {
 		out = append(out, Component{"gain between module and input (calibration)", value * t.Standard(float64(c.Gain[role])), 0})
+	}
+	if _, u := c.gainAt(role, hz); u > 0 {
+		out = append(out, Component{"gain over frequency before the " + role + " input (calibration)", value * u, 0})
 	}
 	return out
 }

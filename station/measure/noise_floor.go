@@ -151,12 +151,10 @@ func (m *NoiseFloor) spectrum(c *Capture) (*noiseSpectrum, *Void, error) {
 	if v := steady(d.Samples, d.Rate, low, high, 5/low); v != nil {
 		return nil, v, nil
 	}
-	n := m.withoutMains(d.Samples, d.Rate, low, high)
-	for k := range n.Power {
-		n.Power[k] *= scale * scale
-	}
-	n.mains *= scale * scale
-	n.mainsSigma *= scale * scale
+	n := m.withoutMains(d.Samples, d.Rate, low, high, func(hz float64) float64 {
+		gain, _ := c.gainAt(IF, hz)
+		return scale / gain
+	})
 	return n, nil, nil
 }
 
@@ -166,18 +164,19 @@ func (m *NoiseFloor) spectrum(c *Capture) (*noiseSpectrum, *Void, error) {
 func mainsHalfWidth(harmonic float64) float64 { return 0.8 + 0.2*harmonic }
 
 // withoutMains makes the periodogram with the mains lines taken out coherently, so that
-// their leakage under the window does not pass for noise.
-func (m *NoiseFloor) withoutMains(x []float64, rate, low, high float64) *noiseSpectrum {
+// their leakage under the window does not pass for noise. volts is the factor from samples to
+// the module's output at a frequency.
+func (m *NoiseFloor) withoutMains(x []float64, rate, low, high float64, volts func(hz float64) float64) *noiseSpectrum {
 	raw := signal.Periodogram(x, rate)
 	n := &noiseSpectrum{}
 	mains := float64(m.Mains)
 	var found []float64
-	quiet := quietLines(raw, nil, mains)
+	quiet := signal.QuietLines(raw, nil, mains)
 	for h := 1.0; h*mains <= math.Min(1.2*high, 0.48*rate); h++ {
 		hz := h * mains
 		width := mainsHalfWidth(h)
 		n.gaps = append(n.gaps, signal.Gap{LowHz: hz - width, HighHz: hz + width})
-		level := localNoise(raw, quiet, hz, 24)
+		level := signal.NoiseAround(raw, quiet, hz, 24)
 		peak, at := 0.0, 0
 		for k := raw.Line(hz - width); k <= raw.Line(hz+width) && k < len(raw.Power); k++ {
 			if raw.Power[k] > peak {
@@ -191,12 +190,13 @@ func (m *NoiseFloor) withoutMains(x []float64, rate, low, high float64) *noiseSp
 			continue
 		}
 		inside := signal.BandPower(raw, hz-width, hz+width, nil)
+		square := math.Pow(volts(hz), 2)
 		excess := inside.Value - level.Value*2*width
-		n.mains += excess
+		n.mains += excess * square
 		background := level.Value * level.Value * raw.Step * 2 * width * raw.Spread
 		cross := 4 * math.Max(excess, 0) * level.Value / raw.Seconds / 2
 		fill := 2 * width * level.Sigma
-		n.mainsSigma += background + cross + fill*fill
+		n.mainsSigma += (background + cross + fill*fill) * square * square
 	}
 	n.mainsSigma = math.Sqrt(n.mainsSigma)
 	n.Spectrum = raw
@@ -207,6 +207,11 @@ func (m *NoiseFloor) withoutMains(x []float64, rate, low, high float64) *noiseSp
 		}
 		n.Spectrum = signal.Periodogram(clean, rate)
 	}
+	for k := 1; k < len(n.Power); k++ {
+		v := volts(float64(k) * n.Step)
+		n.Power[k] *= v * v
+	}
+	n.Power[0] = 0 // the record's mean, which nothing is made of
 	return n
 }
 
@@ -229,9 +234,9 @@ func takeOut(x []float64, rate, hz float64) {
 	}
 }
 
-// root turns a power with its uncertainty into an amplitude reading, station floor
-// subtracted.
-func (m *NoiseFloor) root(c *Capture, name, unit string, total, floor signal.Estimate, hasFloor bool) Reading {
+// root turns a power around a frequency with its uncertainty into an amplitude reading,
+// station floor subtracted.
+func (m *NoiseFloor) root(c *Capture, name, unit string, hz float64, total, floor signal.Estimate, hasFloor bool) Reading {
 	r := Reading{Name: c.Step + name, Unit: unit}
 	net := total.Value
 	if hasFloor {
@@ -252,7 +257,7 @@ func (m *NoiseFloor) root(c *Capture, name, unit string, total, floor signal.Est
 	if hasFloor {
 		components = append(components, Component{"scatter of the station's floor", floor.Sigma / (2 * r.Value), floor.Dof})
 	}
-	r.Budget = Combine(append(components, c.levelComponents(IF, r.Value)...)...)
+	r.Budget = Combine(append(components, c.levelComponents(IF, r.Value, hz)...)...)
 	return r
 }
 
@@ -267,7 +272,7 @@ func (m *NoiseFloor) band(c *Capture, n, floor *noiseSpectrum) Reading {
 	if floor != nil {
 		f = signal.BandPower(floor.Spectrum, low, high, floor.gaps)
 	}
-	return m.root(c, ".band", "V", signal.BandPower(n.Spectrum, low, high, n.gaps), f, floor != nil)
+	return m.root(c, ".band", "V", math.Sqrt(low*high), signal.BandPower(n.Spectrum, low, high, n.gaps), f, floor != nil)
 }
 
 func (m *NoiseFloor) density(c *Capture, n, floor *noiseSpectrum, at quantity.Frequency) Reading {
@@ -280,7 +285,7 @@ func (m *NoiseFloor) density(c *Capture, n, floor *noiseSpectrum, at quantity.Fr
 		return Reading{Name: c.Step + densitySuffix(at), Unit: "V/√Hz",
 			Missing: fmt.Sprintf("the record of %.3g s has fewer than %d spectral lines around %v: record longer", n.Seconds, signal.MinLines, at)}
 	}
-	return m.root(c, densitySuffix(at), "V/√Hz", total, f, floor != nil)
+	return m.root(c, densitySuffix(at), "V/√Hz", float64(at), total, f, floor != nil)
 }
 
 // mainsReading is the hum. The interval of its power (m ± k·u) is turned into one of its
@@ -292,7 +297,7 @@ func (m *NoiseFloor) mainsReading(c *Capture, n *noiseSpectrum) Reading {
 	high := math.Sqrt(math.Max(n.mains+k*n.mainsSigma, 0.1*n.mainsSigma))
 	low := math.Sqrt(math.Max(n.mains-k*n.mainsSigma, 0))
 	r.Value = (low + high) / 2
-	r.Budget = Combine(append([]Component{{"noise under the mains lines", (high - low) / 2 / k, 0}}, c.levelComponents(IF, r.Value)...)...)
+	r.Budget = Combine(append([]Component{{"noise under the mains lines", (high - low) / 2 / k, 0}}, c.levelComponents(IF, r.Value, float64(m.Mains))...)...)
 	if n.mains < 2*n.mainsSigma {
 		r.Notes = append(r.Notes, "the mains lines do not stand out of the noise")
 	}

@@ -150,6 +150,20 @@ type toneLevel struct {
 	dof       float64
 	amplitude float64 // V at the module, before the division
 	noise     float64 // V, standard uncertainty of amplitude
+	shape     float64 // relative standard uncertainty that calibrations leave to it against other tones
+}
+
+// shape is the relative standard uncertainty of a tone against others: of its displacement, and
+// of the gain over frequency.
+func (c *Capture) shape(t Tone, gain float64) float64 {
+	own := 0.0
+	switch all, ok := c.Uncertainty["shape"]; {
+	case t.Uncertainty != nil:
+		own = t.Uncertainty.Standard(float64(t.Displacement))
+	case ok:
+		own = all.Standard(1)
+	}
+	return math.Hypot(own, gain)
 }
 
 // Evaluate fits all tones and relates them to the reference.
@@ -238,7 +252,7 @@ func (m *Response) fromMultitone(c *Capture, part int, tones []Tone) ([]toneLeve
 		return nil, v, nil
 	}
 	spectrum := signal.Periodogram(fit.Residual, d.Rate)
-	quiet := quietLines(spectrum, fit.FrequencyHz, 0)
+	quiet := signal.QuietLines(spectrum, fit.FrequencyHz, 0)
 	pi0 := 1.0
 	for _, t := range tones {
 		pi0 *= math.J0(phaseIndex(float64(t.Displacement), c.Carrier))
@@ -246,14 +260,15 @@ func (m *Response) fromMultitone(c *Capture, part int, tones []Tone) ([]toneLeve
 	out := make([]toneLevel, len(tones))
 	for i, t := range tones {
 		beta := phaseIndex(float64(t.Displacement), c.Carrier)
-		noise := localNoise(spectrum, quiet, driven[i], 14)
+		noise := signal.NoiseAround(spectrum, quiet, driven[i], 14)
 		if v := unbroken(spectrum, fit.FrequencyHz[i], noise.Value*6); len(tones) == 1 && v != nil {
 			return nil, v, nil
 		}
 		made := 2 * math.J1(beta) * pi0 / math.J0(beta)
-		a := cmplx.Abs(fit.Amplitude[i]) * volts
-		sigma := math.Sqrt(noise.Value/seconds) * volts
-		out[i] = toneLevel{driven[i], a / made, sigma / made, noise.Dof, a, sigma}
+		gain, gainU := c.gainAt(IF, driven[i])
+		a := cmplx.Abs(fit.Amplitude[i]) * volts / gain
+		sigma := math.Sqrt(noise.Value/seconds) * volts / gain
+		out[i] = toneLevel{driven[i], a / made, sigma / made, noise.Dof, a, sigma, c.shape(t, gainU)}
 	}
 	return out, nil, nil
 }
@@ -285,10 +300,6 @@ func (m *Response) curve(c *Capture, levels []toneLevel) Result {
 		}
 		return out
 	}
-	shape := 0.0
-	if t, ok := c.Uncertainty["shape"]; ok {
-		shape = t.Standard(1)
-	}
 	var points []curvePoint
 	for _, l := range levels {
 		if l.amplitude < leastSNR*l.noise {
@@ -296,7 +307,7 @@ func (m *Response) curve(c *Capture, levels []toneLevel) Result {
 			continue
 		}
 		points = append(points, curvePoint{hz: l.hz, db: neperInDB * math.Log(l.level),
-			own: neperInDB * math.Hypot(l.sigma/l.level, shape), dof: l.dof})
+			own: neperInDB * math.Hypot(l.sigma/l.level, l.shape), dof: l.dof})
 	}
 	reference := smoothAt(points, math.Log(levels[ref].hz), smoothPoints)
 	for i := range points {

@@ -86,7 +86,9 @@ func (m *Response) fromSweep(c *Capture) ([]toneLevel, *Void, error) {
 		half := math.Max(0.03*hz, 4*step)
 		value, sigma, dof := localTransfer(played, heard, step, delay, hz, half)
 		made := 2 * math.J1(phaseIndex(float64(t.Displacement), c.Carrier))
-		out = append(out, toneLevel{hz, value * volts / made, sigma * volts / made, dof, value * volts, sigma * volts})
+		gain, gainU := c.gainAt(IF, hz)
+		scale := volts / gain
+		out = append(out, toneLevel{hz, value * scale / made, sigma * scale / made, dof, value * scale, sigma * scale, c.shape(t, gainU)})
 	}
 	return out, nil, nil
 }

@@ -208,19 +208,21 @@ func (m *Sensitivity) fit(c *Capture, part int, position, tone float64) (toneFit
 	}
 	spectrum := signal.Periodogram(fit.Residual, d.Rate)
 	seconds := float64(len(d.Samples)) / d.Rate
-	quiet := quietLines(spectrum, fit.FrequencyHz, 0)
+	quiet := signal.QuietLines(spectrum, fit.FrequencyHz, 0)
 	out := toneFit{position: position}
 	for k := range driven {
-		noise := localNoise(spectrum, quiet, fit.FrequencyHz[k], 16)
+		noise := signal.NoiseAround(spectrum, quiet, fit.FrequencyHz[k], 16)
 		if k == 0 {
 			// A phase that steps spreads the tone to the lines beside it: they are held against
 			// the noise further off.
-			off := localNoise(spectrum, quiet, 1.6*fit.FrequencyHz[0], 16)
+			off := signal.NoiseAround(spectrum, quiet, 1.6*fit.FrequencyHz[0], 16)
 			if v := unbroken(spectrum, fit.FrequencyHz[0], math.Min(noise.Value, off.Value)); v != nil {
 				return toneFit{}, v, nil
 			}
 		}
-		out.harmonics = append(out.harmonics, harmonic{fit.Amplitude[k] * complex(volts, 0), math.Sqrt(noise.Value/seconds) * volts, noise.Dof})
+		gain, _ := c.gainAt(IF, fit.FrequencyHz[k])
+		scale := volts / gain
+		out.harmonics = append(out.harmonics, harmonic{fit.Amplitude[k] * complex(scale, 0), math.Sqrt(noise.Value/seconds) * scale, noise.Dof})
 	}
 	if v := steady(fit.Residual, d.Rate, 2*8/seconds, math.Min(16*tone, 0.4*d.Rate), seconds/8); v != nil {
 		return toneFit{}, v, nil
@@ -231,7 +233,7 @@ func (m *Sensitivity) fit(c *Capture, part int, position, tone float64) (toneFit
 // calibrations are the components that every method's echo carries, for a dependence
 // dlnV/dlnX of the echo on the displacement.
 func (m *Sensitivity) calibrations(c *Capture, echo, onDisplacement float64) []Component {
-	out := c.levelComponents(IF, echo)
+	out := c.levelComponents(IF, echo, float64(c.Target.Tone))
 	if t, ok := c.Uncertainty["displacement"]; ok {
 		out = append(out, Component{"displacement of the target (calibration)", math.Abs(echo * onDisplacement * t.Standard(float64(c.Target.Displacement))), 0})
 	}

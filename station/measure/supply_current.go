@@ -15,11 +15,11 @@ import (
 // 50 % duty, so that an AC-coupled input can read a DC current. The fundamental of a
 // square wave between 0 and V has the peak (2/π)·V, hence
 //
-//	I = (π/2)·A1/(R·G)
+//	I = (π/2)·A1/(R·G) − I0
 //
 // with A1 the peak of the fundamental at the input (V; least-squares sine fit with
 // free frequency and the harmonics fitted beside it, IEEE Std 1057), R the shunt (Ω)
-// and G the gain of its amplifier. The third harmonic must be A1/3 (Fourier series of
+// and G the gain of its amplifier, I0 the offset read with no load (A). The third harmonic must be A1/3 (Fourier series of
 // the square wave): a difference of more than 5 % means that the input clips or the
 // chopper is sick, and the reading is void.
 type SupplyCurrent struct {
@@ -94,10 +94,12 @@ func (m *SupplyCurrent) Evaluate(c *Capture) (Result, error) {
 	if err != nil {
 		return Result{}, fmt.Errorf("step %s: %w: record at least %.2f s", c.Step, err, 10/chop)
 	}
-	a1, a3 := cmplx.Abs(fit.Amplitude[0]), cmplx.Abs(fit.Amplitude[2])
+	gain1, _ := c.gainAt(Sense, fit.FrequencyHz[0])
+	gain3, _ := c.gainAt(Sense, fit.FrequencyHz[2])
+	a1, a3 := cmplx.Abs(fit.Amplitude[0])/gain1, cmplx.Abs(fit.Amplitude[2])/gain3
 	spectrum := signal.Periodogram(fit.Residual, d.Rate)
-	noise := localNoise(spectrum, quietLines(spectrum, fit.FrequencyHz, 0), fit.FrequencyHz[0], 12)
-	sigma := math.Sqrt(noise.Value * d.Rate / float64(len(d.Samples)))
+	noise := signal.NoiseAround(spectrum, signal.QuietLines(spectrum, fit.FrequencyHz, 0), fit.FrequencyHz[0], 12)
+	sigma := math.Sqrt(noise.Value*d.Rate/float64(len(d.Samples))) / gain1
 	if v := chopperVoid(a1, a3, sigma, chop, fit.FrequencyHz[0]); v != nil {
 		return voidAll(c.Step, m.Readings(), v), nil
 	}
@@ -105,10 +107,13 @@ func (m *SupplyCurrent) Evaluate(c *Capture) (Result, error) {
 		return voidAll(c.Step, m.Readings(), v), nil
 	}
 	perVolt := math.Pi / 2 / (float64(c.Shunt.Resistance) * float64(c.Shunt.Gain))
-	value := perVolt * a1 * volts
+	value := perVolt*a1*volts - float64(c.Shunt.Offset)
 	components := append([]Component{{"scatter of the fitted fundamental", perVolt * sigma * volts, noise.Dof}},
-		c.levelComponents(Sense, value)...)
+		c.levelComponents(Sense, value, fit.FrequencyHz[0])...)
 	components = append(components, Component{"shunt and its amplifier (calibration)", value * c.Uncertainty["shunt"].Standard(float64(c.Shunt.Resistance)), 0})
+	if t, ok := c.Uncertainty["offset"]; ok {
+		components = append(components, Component{"offset of the sense amplifier (calibration)", t.Absolute / 2, 0})
+	}
 	return Result{Readings: []Reading{{Name: c.Step, Unit: "A", Value: value, Budget: Combine(components...)}}}, nil
 }
 

@@ -1,0 +1,175 @@
+package signal
+
+import (
+	"errors"
+	"math"
+
+	"gonum.org/v1/gonum/mat"
+)
+
+// Scattered is a value measured at a place, with its standard uncertainty.
+type Scattered struct{ X, Y, Sigma float64 }
+
+// Smooth is a smooth curve through scattered values: a sum of given columns with free
+// coefficients and a Gaussian process for what they leave over (universal kriging; C.E.
+// Rasmussen & C.K.I. Williams, Gaussian Processes for Machine Learning, 2006, section 2.7).
+// It knows its own uncertainty everywhere, between the points too.
+type Smooth struct {
+	points     []Scattered
+	columns    func(x float64) []float64
+	size       float64 // of what the columns leave over, in Y
+	reach      float64 // its correlation length, in X
+	covariance mat.Cholesky
+	design     *mat.Dense // K⁻¹·H
+	normal     mat.Cholesky
+	beta       []float64
+	rest       *mat.VecDense // K⁻¹·(y − H·β)
+	// Misfit is the mean square of the residuals of the columns alone, in their standard
+	// uncertainties: about one where nothing is left over.
+	Misfit float64
+}
+
+// ErrTooFewPoints says that a curve has fewer points than coefficients.
+var ErrTooFewPoints = errors.New("too few points for a smooth curve")
+
+// FitSmooth fits a curve. Size and reach of what the columns leave over are those of the
+// greatest restricted likelihood on a grid; reaches are looked for from least to most.
+func FitSmooth(points []Scattered, columns func(x float64) []float64, least, most float64) (*Smooth, error) {
+	if len(points) <= len(columns(points[0].X)) {
+		return nil, ErrTooFewPoints
+	}
+	sigma := 0.0
+	for _, p := range points {
+		sigma += p.Sigma * p.Sigma / float64(len(points))
+	}
+	sigma = math.Sqrt(sigma)
+	var best *Smooth
+	likelihood := math.Inf(-1)
+	for _, size := range []float64{0, 0.3, 1, 3, 10, 30, 100, 300} {
+		for reach := least; reach <= most*1.001; reach *= 1.6 {
+			s := &Smooth{points: points, columns: columns, size: size * sigma, reach: reach}
+			l, err := s.fit()
+			if err != nil {
+				return nil, err
+			}
+			if size == 0 {
+				s.Misfit = s.misfit()
+				reach = most * 2
+			} else if best != nil {
+				s.Misfit = best.Misfit
+			}
+			if l > likelihood {
+				best, likelihood = s, l
+			}
+		}
+	}
+	return best, nil
+}
+
+func (s *Smooth) kernel(a, b float64) float64 {
+	d := (a - b) / s.reach
+	return s.size * s.size * math.Exp(-d*d/2)
+}
+
+// fit solves for the coefficients and gives the logarithm of the restricted likelihood.
+func (s *Smooth) fit() (float64, error) {
+	n, p := len(s.points), len(s.columns(s.points[0].X))
+	k := mat.NewSymDense(n, nil)
+	h, y := mat.NewDense(n, p, nil), mat.NewVecDense(n, nil)
+	for i, a := range s.points {
+		for j := i; j < n; j++ {
+			k.SetSym(i, j, s.kernel(a.X, s.points[j].X))
+		}
+		k.SetSym(i, i, k.At(i, i)+a.Sigma*a.Sigma)
+		h.SetRow(i, s.columns(a.X))
+		y.SetVec(i, a.Y)
+	}
+	if !s.covariance.Factorize(k) {
+		return 0, errors.New("the points of the curve contradict each other: two at one place without uncertainty")
+	}
+	s.design = mat.NewDense(n, p, nil)
+	if err := s.covariance.SolveTo(s.design, h); err != nil {
+		return 0, err
+	}
+	var normal mat.Dense
+	normal.Mul(h.T(), s.design)
+	sym := mat.NewSymDense(p, nil)
+	for i := range p {
+		for j := i; j < p; j++ {
+			sym.SetSym(i, j, (normal.At(i, j)+normal.At(j, i))/2)
+		}
+	}
+	if !s.normal.Factorize(sym) {
+		return 0, ErrTooFewPoints
+	}
+	var right, beta, left mat.VecDense
+	right.MulVec(s.design.T(), y)
+	if err := s.normal.SolveVecTo(&beta, &right); err != nil {
+		return 0, err
+	}
+	s.beta = beta.RawVector().Data
+	left.MulVec(h, &beta)
+	left.SubVec(y, &left)
+	s.rest = mat.NewVecDense(n, nil)
+	if err := s.covariance.SolveVecTo(s.rest, &left); err != nil {
+		return 0, err
+	}
+	return -0.5 * (s.covariance.LogDet() + s.normal.LogDet() + mat.Dot(&left, s.rest)), nil
+}
+
+// misfit is the mean square of what is left over, in standard uncertainties; without a
+// process K is diagonal.
+func (s *Smooth) misfit() float64 {
+	sum := 0.0
+	for i, p := range s.points {
+		r := s.rest.AtVec(i) * p.Sigma
+		sum += r * r
+	}
+	return sum / float64(len(s.points)-len(s.beta))
+}
+
+// weights of the curve at a place: value = Σ w·y; and what the variance needs.
+type place struct {
+	h, k, solved, lever *mat.VecDense
+	x                   float64
+}
+
+func (s *Smooth) place(x float64) place {
+	n, p := len(s.points), len(s.beta)
+	q := place{x: x, h: mat.NewVecDense(p, s.columns(x)), k: mat.NewVecDense(n, nil), solved: mat.NewVecDense(n, nil), lever: mat.NewVecDense(p, nil)}
+	for i, a := range s.points {
+		q.k.SetVec(i, s.kernel(x, a.X))
+	}
+	_ = s.covariance.SolveVecTo(q.solved, q.k) // the matrix was factorised; its condition is that of the fit
+	q.lever.MulVec(s.design.T(), q.k)
+	q.lever.SubVec(q.h, q.lever)
+	return q
+}
+
+// At is the curve at a place with its standard uncertainty.
+func (s *Smooth) At(x float64) (y, sigma float64) {
+	q := s.place(x)
+	return s.value(q), math.Sqrt(math.Max(0, s.cross(q, q)))
+}
+
+// Between is the curve at a place less that at another, with the standard uncertainty of the
+// difference.
+func (s *Smooth) Between(x, reference float64) (y, sigma float64) {
+	a, b := s.place(x), s.place(reference)
+	return s.value(a) - s.value(b), math.Sqrt(math.Max(0, s.cross(a, a)+s.cross(b, b)-2*s.cross(a, b)))
+}
+
+func (s *Smooth) value(q place) float64 {
+	v := mat.Dot(q.k, s.rest)
+	for i, b := range s.beta {
+		v += b * q.h.AtVec(i)
+	}
+	return v
+}
+
+// cross is the covariance of the curve at two places.
+func (s *Smooth) cross(a, b place) float64 {
+	var solved mat.VecDense
+	_ = s.normal.SolveVecTo(&solved, b.lever)
+	return s.kernel(a.x, b.x) - mat.Dot(a.k, b.solved) + mat.Dot(a.lever, &solved)
+}
