@@ -204,9 +204,9 @@ func (r *Runner) calibrate(c *measure.Capture, schedule measure.Schedule) {
 		in := r.Setup.Inputs[q.Role]
 		c.Inputs[q.Role], c.FullScale[q.Role] = in.Channel, in.FullScale
 		c.Uncertainty["full_scale"] = in.FullScaleU
-		if len(in.Response) > 0 {
+		if len(in.Response.Points) > 0 {
 			if c.Response == nil {
-				c.Response = map[string]curve.Curve[quantity.Ratio]{}
+				c.Response = map[string]curve.Gain{}
 			}
 			c.Response[q.Role] = in.Response
 		}

@@ -16,23 +16,23 @@ const (
 // taken; in a capture folder it makes each entry self-contained. The keys are those
 // of capture.yaml. Every uncertainty is the expanded one at k = 2.
 type Conditions struct {
-	Step         string                                 `key:"step" need:"yes" doc:"the step's name in the plan; readings are named after it"`
-	Measure      string                                 `key:"measure" need:"yes" doc:"the measurement"`
-	Carrier      quantity.Frequency                     `key:"carrier" range:">0" doc:"the module's carrier, where it differs from the folder's"`
-	Inputs       map[string]int                         `key:"inputs" range:">0" doc:"which channel (from 1) is what"`
-	FullScale    map[string]quantity.Voltage            `key:"full_scale" range:">0" doc:"volts peak at digital full scale, per input"`
-	Gain         map[string]quantity.Ratio              `key:"gain" range:">0" doc:"voltage gain between module and input"`
-	Response     map[string]curve.Curve[quantity.Ratio] `key:"response" doc:"gain over frequency between module and samples, over what full_scale and gain state, per input; absent: even"`
-	Uncertainty  map[string]tolerance.Tolerance         `key:"uncertainty" doc:"expanded uncertainty (k = 2) of full_scale, gain, shunt, displacement, standoff, phase"`
-	Shunt        *Shunt                                 `key:"shunt" doc:"the current shunt"`
-	Supply       SupplyState                            `key:"supply" doc:"off, or the supply voltage"`
-	StationFloor string                                 `key:"station_floor" doc:"the step that holds the station's own floor"`
-	Target       *Motion                                `key:"target" doc:"the target's true motion"`
-	Tones        []Tone                                 `key:"tones" doc:"the target's motion where it is more than one tone"`
-	Sweep        *Sweep                                 `key:"sweep" doc:"the target's motion where it is a sweep; tones then gives displacement against frequency"`
-	Reported     *quantity.Current                      `key:"reported" doc:"current the supply reported itself"`
-	File         string                                 `key:"file" doc:"the WAV file, where there is one"`
-	Parts        []Part                                 `key:"parts" doc:"the WAV files, where there are several"`
+	Step         string                         `key:"step" need:"yes" doc:"the step's name in the plan; readings are named after it"`
+	Measure      string                         `key:"measure" need:"yes" doc:"the measurement"`
+	Carrier      quantity.Frequency             `key:"carrier" range:">0" doc:"the module's carrier, where it differs from the folder's"`
+	Inputs       map[string]int                 `key:"inputs" range:">0" doc:"which channel (from 1) is what"`
+	FullScale    map[string]quantity.Voltage    `key:"full_scale" range:">0" doc:"volts peak at digital full scale, per input"`
+	Gain         map[string]quantity.Ratio      `key:"gain" range:">0" doc:"voltage gain between module and input"`
+	Response     map[string]curve.Gain          `key:"response" doc:"gain over frequency between module and samples, over what full_scale and gain state, per input; absent: even"`
+	Uncertainty  map[string]tolerance.Tolerance `key:"uncertainty" doc:"expanded uncertainty (k = 2) of full_scale, gain, shunt, displacement, standoff, phase"`
+	Shunt        *Shunt                         `key:"shunt" doc:"the current shunt"`
+	Supply       SupplyState                    `key:"supply" doc:"off, or the supply voltage"`
+	StationFloor string                         `key:"station_floor" doc:"the step that holds the station's own floor"`
+	Target       *Motion                        `key:"target" doc:"the target's true motion"`
+	Tones        []Tone                         `key:"tones" doc:"the target's motion where it is more than one tone"`
+	Sweep        *Sweep                         `key:"sweep" doc:"the target's motion where it is a sweep; tones then gives displacement against frequency"`
+	Reported     *quantity.Current              `key:"reported" doc:"current the supply reported itself"`
+	File         string                         `key:"file" doc:"the WAV file, where there is one"`
+	Parts        []Part                         `key:"parts" doc:"the WAV files, where there are several"`
 }
 
 // Shunt is the resistor the supply current flows through.

@@ -117,11 +117,7 @@ func (c *Capture) volts(role string) (float64, error) {
 // gainAt is the gain over frequency between module and samples, over what full scale and
 // gain state, with its relative standard uncertainty.
 func (c *Capture) gainAt(role string, hz float64) (gain, relative float64) {
-	r := c.Response[role]
-	if len(r) == 0 {
-		return 1, 0
-	}
-	v, u := r.At(quantity.Frequency(hz))
+	v, u := c.Response[role].At(quantity.Frequency(hz))
 	return float64(v), u / 2
 }
 

@@ -217,7 +217,7 @@ func (m *NoiseFloor) withoutMains(x []float64, rate, low, high float64, volts fu
 
 // takeOut removes one tone near a frequency (within a line) from x in place.
 func takeOut(x []float64, rate, hz float64) {
-	fine := strongestNear(x, rate, hz, rate/float64(len(x))/hz)
+	fine := signal.StrongestNear(x, rate, hz, rate/float64(len(x))/hz)
 	for step := rate / float64(len(x)) / 8; step > rate/float64(len(x))/100; step /= 2 {
 		toRadians := 2 * math.Pi / rate
 		beside := signal.Strengths(x, []float64{(fine - step) * toRadians, fine * toRadians, (fine + step) * toRadians})

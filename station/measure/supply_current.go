@@ -85,7 +85,7 @@ func (m *SupplyCurrent) Evaluate(c *Capture) (Result, error) {
 		return Result{}, fmt.Errorf("step %s: a chopping frequency of %v cannot be checked at a sample rate of %.0f Hz: lower it below a sixth of the rate", c.Step, c.Shunt.Chop, s.Rate)
 	}
 	d := signal.Decimate(s.Samples, s.Rate, math.Min(5.4*chop, 0.4*s.Rate))
-	fundamental := strongestNear(d.Samples, d.Rate, chop, 0.03)
+	fundamental := signal.StrongestNear(d.Samples, d.Rate, chop, 0.03)
 	var multiples []float64
 	for k := 1.0; k*fundamental < 0.495*d.Rate && k <= 9; k++ {
 		multiples = append(multiples, k*fundamental)
@@ -138,23 +138,4 @@ func chopperVoid(a1, a3, sigma, chop, foundHz float64) *Void {
 			"check that the sense input does not clip and that the chopper switches fully at 50 % duty"}
 	}
 	return nil
-}
-
-// strongestNear finds the strongest tone within a relative distance of a frequency: the
-// controller's clock is not the sound interface's. Steps of a quarter line.
-func strongestNear(x []float64, rate, hz, relative float64) float64 {
-	step := rate / float64(len(x)) / 4
-	span := int(hz * relative / step)
-	w := make([]float64, 0, 2*span+1)
-	for i := -span; i <= span; i++ {
-		w = append(w, 2*math.Pi*(hz+float64(i)*step)/rate)
-	}
-	best := 0
-	strengths := signal.Strengths(x, w)
-	for i, v := range strengths {
-		if v > strengths[best] {
-			best = i
-		}
-	}
-	return w[best] * rate / (2 * math.Pi)
 }

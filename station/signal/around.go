@@ -44,3 +44,22 @@ func NoiseAround(residual Spectrum, quiet []bool, hz float64, want int) Estimate
 	}
 	return Estimate{}
 }
+
+// StrongestNear finds the strongest tone within a relative distance of a frequency: the
+// controller's clock is not the sound interface's. Steps of a quarter line.
+func StrongestNear(x []float64, rate, hz, relative float64) float64 {
+	step := rate / float64(len(x)) / 4
+	span := int(hz * relative / step)
+	w := make([]float64, 0, 2*span+1)
+	for i := -span; i <= span; i++ {
+		w = append(w, 2*math.Pi*(hz+float64(i)*step)/rate)
+	}
+	best := 0
+	strengths := Strengths(x, w)
+	for i, v := range strengths {
+		if v > strengths[best] {
+			best = i
+		}
+	}
+	return w[best] * rate / (2 * math.Pi)
+}

@@ -45,7 +45,7 @@ func FitSmooth(points []Scattered, columns func(x float64) []float64, least, mos
 	sigma = math.Sqrt(sigma)
 	var best *Smooth
 	likelihood := math.Inf(-1)
-	for _, size := range []float64{0, 0.3, 1, 3, 10, 30, 100, 300} {
+	for _, size := range []float64{0, 0.3, 1, 3, 10, 30, 100, 300, 1e3, 3e3, 1e4, 3e4, 1e5} {
 		for reach := least; reach <= most*1.001; reach *= 1.6 {
 			s := &Smooth{points: points, columns: columns, size: size * sigma, reach: reach}
 			l, err := s.fit()
@@ -172,4 +172,13 @@ func (s *Smooth) cross(a, b place) float64 {
 	var solved mat.VecDense
 	_ = s.normal.SolveVecTo(&solved, b.lever)
 	return s.kernel(a.x, b.x) - mat.Dot(a.k, b.solved) + mat.Dot(a.lever, &solved)
+}
+
+// Coefficient is a column's coefficient with its standard uncertainty.
+func (s *Smooth) Coefficient(i int) (v, sigma float64) {
+	unit := mat.NewVecDense(len(s.beta), nil)
+	unit.SetVec(i, 1)
+	var solved mat.VecDense
+	_ = s.normal.SolveVecTo(&solved, unit)
+	return s.beta[i], math.Sqrt(solved.AtVec(i))
 }

@@ -52,30 +52,50 @@ func (c Curve[T]) Falls() (f quantity.Frequency, ok bool) {
 	return 0, false
 }
 
-// Times is the product of two gains over frequency, at the points of both; an empty curve
-// is one everywhere. The uncertainties are taken as independent.
-func Times(a, b Curve[quantity.Ratio]) Curve[quantity.Ratio] {
+// Gain is a gain over frequency over that at a reference: a first-order high-pass, where there is
+// one, times the points. The points' uncertainties are those of the whole.
+type Gain struct {
+	HighPass quantity.Frequency    `key:"high_pass" range:">0" doc:"corner of a first-order high-pass that the points do not hold"`
+	Points   Curve[quantity.Ratio] `key:"points" need:"yes" doc:"the rest of the gain over frequency"`
+}
+
+// At is the gain at a frequency, with its relative expanded uncertainty (k = 2); one, exactly,
+// where there are no points. A first-order high-pass has the gain 1/√(1 + (fc/f)²).
+func (g Gain) At(f quantity.Frequency) (value quantity.Ratio, relative float64) {
+	if len(g.Points) == 0 {
+		return 1, 0
+	}
+	value, relative = g.Points.At(f)
+	return value / quantity.Ratio(math.Hypot(1, float64(g.HighPass/f))), relative
+}
+
+// Times is the product of two gains, of which at most one has a high-pass, at the points of
+// both. The uncertainties are taken as independent.
+func (g Gain) Times(h Gain) Gain {
 	switch {
-	case len(a) == 0:
-		return b
-	case len(b) == 0:
-		return a
+	case len(g.Points) == 0:
+		return h
+	case len(h.Points) == 0:
+		return g
 	}
 	var at []float64
-	for _, p := range append(append(Curve[quantity.Ratio](nil), a...), b...) {
+	for _, p := range g.Points {
+		at = append(at, float64(p.Frequency))
+	}
+	for _, p := range h.Points {
 		at = append(at, float64(p.Frequency))
 	}
 	sort.Float64s(at)
-	var out Curve[quantity.Ratio]
+	out := Gain{HighPass: max(g.HighPass, h.HighPass)}
 	for i, hz := range at {
 		if i > 0 && hz <= at[i-1]*(1+1e-9) {
 			continue
 		}
 		f := quantity.Frequency(hz)
-		va, ua := a.At(f)
-		vb, ub := b.At(f)
-		t := tolerance.Percent(math.Hypot(ua, ub))
-		out = append(out, Point[quantity.Ratio]{Frequency: f, Value: va * vb, Uncertainty: &t})
+		vg, ug := g.Points.At(f)
+		vh, uh := h.Points.At(f)
+		t := tolerance.Percent(math.Hypot(ug, uh))
+		out.Points = append(out.Points, Point[quantity.Ratio]{Frequency: f, Value: vg * vh, Uncertainty: &t})
 	}
 	return out
 }
