@@ -73,15 +73,17 @@ func (s *Session) input(role string) (attach.InputSetup, error) {
 
 // play is a periodic signal on the shaker's output: tones on lines of the period.
 type play struct {
-	period int
-	lines  []int
-	wave   []float64 // one period
-	peak   float64   // of the wave
-	level  float64   // peak to play it at, fraction of full scale
+	period    int
+	lines     []int
+	amplitude []float64
+	phase     []float64 // of each cosine at the period's start
+	wave      []float64 // one period
+	peak      float64   // of the wave
+	level     float64   // peak to play it at, fraction of full scale
 }
 
 func newPlay(period int, lines []int, amplitude, phase []float64) play {
-	p := play{period: period, lines: lines, wave: signal.Multitone(lines, amplitude, phase, period), level: 1}
+	p := play{period: period, lines: lines, amplitude: amplitude, phase: phase, wave: signal.Multitone(lines, amplitude, phase, period), level: 1}
 	for _, v := range p.wave {
 		p.peak = math.Max(p.peak, math.Abs(v))
 	}
@@ -94,7 +96,7 @@ func (p play) scaled(peak float64) play { p.level = peak; return p }
 // tone is one tone of a peak, on the line of the period nearest to a frequency.
 func (s *Session) tone(seconds, hz, peak float64) play {
 	period, line := s.frames(seconds), int(math.Round(hz*seconds))
-	return play{period: period, lines: []int{line}, wave: signal.Multitone([]int{line}, []float64{1}, []float64{0}, period), peak: 1, level: peak}
+	return newPlay(period, []int{line}, []float64{1}, []float64{0}).scaled(peak)
 }
 
 // hz lists the tones' frequencies at the output's clock.
@@ -102,6 +104,15 @@ func (p play) hz(rate float64) []float64 {
 	out := make([]float64, len(p.lines))
 	for i, l := range p.lines {
 		out[i] = float64(l) * rate / float64(p.period)
+	}
+	return out
+}
+
+// drives lists each tone's peak as a fraction of the output's full scale.
+func (p play) drives() []float64 {
+	out := make([]float64, len(p.amplitude))
+	for i, a := range p.amplitude {
+		out[i] = a / p.peak * p.level
 	}
 	return out
 }

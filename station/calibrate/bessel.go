@@ -1,0 +1,306 @@
+package calibrate
+
+import (
+	"context"
+	"math"
+	"math/cmplx"
+
+	"lotgate/limits/quantity"
+)
+
+// absolute is the displacement per volt at one frequency.
+type absolute struct {
+	hz       float64
+	perVolt  float64 // m/V, peak over peak
+	relative float64 // standard uncertainty
+	noise    float64 // the part of it that the noise leaves
+	beta     float64
+}
+
+const (
+	rampStart   = 0.02
+	rampStep    = 1.35
+	ownHarmonic = 0.01 // share at which the shaker's own harmonics are said to show
+	leastBeta   = 0.25
+	largestBeta = 1.7
+)
+
+// ramp drives one tone up, step by step, until the largest excursion that the station file
+// allows, the output's end, or the shaker's own harmonics are reached.
+func (b *bench) ramp(ctx context.Context) error {
+	b.s.tell("driving the shaker up at %v", b.t.Absolute)
+	allowed := float64(b.s.Setup.Target.Largest)
+	level, perLevel := rampStart, 0.0
+	for {
+		p := b.s.tone(1, float64(b.t.Absolute), level)
+		h, err := b.harmonics(ctx, p, 1)
+		if err != nil {
+			return err
+		}
+		beta, seen := roughBeta(h)
+		if seen {
+			if perLevel == 0 {
+				perLevel = beta / level
+			}
+			displacement := beta * b.lambda() / (4 * math.Pi)
+			if b.own(h) > ownHarmonic {
+				b.largest = b.beta * b.lambda() / (4 * math.Pi)
+				break
+			}
+			b.level, b.beta = level, beta
+			if displacement > 0.97*allowed || beta > largestBeta || level >= 0.9 {
+				break
+			}
+			level = math.Min(math.Min(level*rampStep, 0.98*level*allowed/displacement), 0.9)
+			if level <= b.level*1.01 {
+				break
+			}
+			continue
+		}
+		if level >= 0.9 {
+			break
+		}
+		level = math.Min(0.9, level*rampStep)
+	}
+	if b.beta < leastBeta {
+		return wrong("let the shaker move further (target: {largest: …}), use a module of a higher carrier, or choose a frequency nearer the shaker's resonance with --at",
+			"the plate moves by %v at most, a phase index β of %.2f: the harmonics of the IF are too faint to tell the displacement", quantity.Length(b.beta*b.lambda()/(4*math.Pi)), b.beta)
+	}
+	return nil
+}
+
+// harmonicsAt is the IF's first four harmonics, and the plate's own, at one drive.
+type harmonicsAt struct {
+	echo  [5]found // index: harmonic
+	plate [5]found // displacement, up to the accelerometer's factor
+}
+
+// harmonics records IF and plate with one tone and fits both.
+func (b *bench) harmonics(ctx context.Context, p play, repeats int) (harmonicsAt, error) {
+	var out harmonicsAt
+	inputs := []int{b.module.Channel}
+	if b.t.By == "accelerometer" {
+		inputs = append(inputs, b.plate.Channel)
+	}
+	f := p.hz(b.s.rate())[0]
+	hz := []float64{f, 2 * f, 3 * f, 4 * f}
+	for range repeats {
+		rec, err := b.s.shaken(ctx, p, inputs, p.period)
+		if err != nil {
+			return out, err
+		}
+		for _, c := range inputs {
+			fits, _, err := b.s.fit(rec.Samples[c], hz)
+			if err != nil {
+				return out, err
+			}
+			// Repeats follow each other by whole periods and the same lead, so that phases agree.
+			to, plate := &out.echo, c != b.module.Channel
+			if plate {
+				to = &out.plate
+			}
+			for n, t := range fits {
+				scale := complex(1/float64(repeats), 0)
+				if plate {
+					scale *= b.displacement(hz[n])
+				} else {
+					scale /= b.chain(hz[n])
+				}
+				to[n+1].a += t.a * scale
+				to[n+1].sigma = math.Hypot(to[n+1].sigma, t.sigma*cmplx.Abs(scale)) // of a sum: over repeats
+			}
+		}
+	}
+	return out, nil
+}
+
+// chain is the gain between module and samples with its phase, as far as the high-pass tells it.
+func (b *bench) chain(hz float64) complex128 {
+	return withPhase(b.module.Response.At, b.module.Response.HighPass, hz)
+}
+
+// displacement turns the accelerometer's samples into displacement, up to a common factor.
+func (b *bench) displacement(hz float64) complex128 {
+	return -1 / (withPhase(b.plate.Own.At, b.plate.Own.HighPass, hz) * complex(square(2*math.Pi*hz), 0))
+}
+
+func withPhase(at func(quantity.Frequency) (quantity.Ratio, float64), corner quantity.Frequency, hz float64) complex128 {
+	g, _ := at(quantity.Frequency(hz))
+	return cmplx.Rect(float64(g), math.Atan(float64(corner)/hz))
+}
+
+// own is the largest of the plate's own harmonics over its fundamental.
+func (b *bench) own(h harmonicsAt) float64 {
+	if b.t.By != "accelerometer" || h.plate[1].a == 0 {
+		return 0
+	}
+	worst := 0.0
+	for _, n := range []int{2, 3} {
+		if v := cmplx.Abs(h.plate[n].a); v > 6*h.plate[n].sigma {
+			worst = math.Max(worst, v/cmplx.Abs(h.plate[1].a))
+		}
+	}
+	return worst
+}
+
+// roughBeta tells the phase index from the third over the first harmonic, the module's response
+// between them taken as even; seen is false where the third does not stand out.
+func roughBeta(h harmonicsAt) (beta float64, seen bool) {
+	if cmplx.Abs(h.echo[3].a) < 10*h.echo[3].sigma {
+		return 0, false
+	}
+	return betaOf(1, cmplx.Abs(h.echo[3].a)/cmplx.Abs(h.echo[1].a)), true
+}
+
+// betaOf solves J_{m+2}(β)/J_m(β) = ratio for 0 < β < 3, where the ratio rises steadily
+// (Abramowitz & Stegun 9.1.10, 9.1.27).
+func betaOf(m int, ratio float64) float64 {
+	low, high := 0.0, 3.0
+	for range 60 {
+		middle := (low + high) / 2
+		if math.Jn(m+2, middle) < ratio*math.Jn(m, middle) {
+			low = middle
+		} else {
+			high = middle
+		}
+	}
+	return (low + high) / 2
+}
+
+// slopeOf is d ln(J_{m+2}/J_m)/d ln β at β (Abramowitz & Stegun 9.1.27).
+func slopeOf(m int, beta float64) float64 {
+	log := func(n int) float64 { return float64(n) - beta*math.Jn(n+1, beta)/math.Jn(n, beta) }
+	return log(m+2) - log(m)
+}
+
+// bessel finds the displacement absolutely at a low frequency, the way ISO 16063-11 and -41 use
+// an interferometer: with x(t) = X·cos ωt the IF holds the harmonics 2·V0·J_n(β)·|sin φ0| (odd)
+// and |cos φ0| (even), so that
+//
+//	J3(β)/J1(β) = (H3/C3)/(H1/C1),  J4(β)/J2(β) = (H4/C4)/(H2/C2)
+//
+// with C_n what module and input make of a small motion at the n-th harmonic: measured with
+// small tones beside them against the accelerometer, or known of the reference module. β gives
+// X = β·λ/4π. Odd harmonics are taken at the place of the stage where |sin φ0| is large, even
+// ones λ/8 from it; each pair counts by its certainty, so that every φ0 is covered. The plate's
+// own third harmonic, as the accelerometer sees it, is taken off.
+func (b *bench) bessel(ctx context.Context) (absolute, error) {
+	out := absolute{}
+	p := b.s.tone(besselSeconds, float64(b.t.Absolute), b.level)
+	out.hz = p.hz(b.s.rate())[0]
+	b.s.tell("comparing harmonics at %v, %d times %.0f s at two places", quantity.Frequency(out.hz), b.s.repeats(), besselSeconds)
+	small, err := b.smallMotion(ctx, out.hz)
+	if err != nil {
+		return out, err
+	}
+	odd, err := b.harmonics(ctx, p, b.s.repeats())
+	if err != nil {
+		return out, err
+	}
+	if err := b.s.Bench.Target.MoveTo(ctx, quantity.Length(b.cosine)); err != nil {
+		return out, err
+	}
+	even, err := b.harmonics(ctx, p, b.s.repeats())
+	if err != nil {
+		return out, err
+	}
+	if err := b.s.Bench.Target.MoveTo(ctx, quantity.Length(b.sine)); err != nil {
+		return out, err
+	}
+	var beta, weight, flat float64
+	for _, pair := range []struct {
+		m int
+		h harmonicsAt
+	}{{1, odd}, {2, even}} {
+		upper, lower := pair.h.echo[pair.m+2], pair.h.echo[pair.m]
+		if cmplx.Abs(upper.a) < 20*upper.sigma || cmplx.Abs(lower.a) < 20*lower.sigma {
+			continue
+		}
+		top := upper.a / small.gain[pair.m+2]
+		if pair.m == 1 && pair.h.plate[1].a != 0 {
+			top -= pair.h.plate[3].a * complex(math.J0(b.beta), 0)
+		}
+		ratio := cmplx.Abs(top) / cmplx.Abs(lower.a/small.gain[pair.m])
+		found, slope := 0.0, 0.0
+		found = betaOf(pair.m, ratio)
+		slope = slopeOf(pair.m, found)
+		noise := math.Sqrt(square(upper.sigma/cmplx.Abs(upper.a))+square(lower.sigma/cmplx.Abs(lower.a))+
+			square(small.relative[pair.m+2])+square(small.relative[pair.m])) / slope
+		w := 1 / (noise * noise)
+		beta, weight = beta+w*found, weight+w
+		flat += w * b.shapeU(float64(pair.m+2)*out.hz, float64(pair.m)*out.hz) / slope
+	}
+	if weight == 0 {
+		return out, wrong("move the standoff by λ/16, or let the shaker move further", "no pair of harmonics stands out enough to tell the displacement")
+	}
+	out.beta, out.noise = beta/weight, 1/math.Sqrt(weight)
+	volts := b.level * float64(b.s.Setup.Target.FullScale)
+	out.perVolt = out.beta * b.lambda() / (4 * math.Pi) / volts
+	out.relative = math.Sqrt(square(out.noise) + square(flat/weight) + square(float64(b.t.CarrierU)/2))
+	return out, nil
+}
+
+// smallMotion is what module and input make of a small displacement at the harmonics of the
+// absolute frequency.
+type smallMotion struct {
+	gain     [5]complex128
+	relative [5]float64 // standard uncertainty
+}
+
+// smallBeta is the phase index of each small tone: small enough that the mixer is a straight
+// line to one part in 10,000.
+const smallBeta = 0.025
+
+// smallMotion measures it with four small tones beside the harmonics, on odd lines, so that
+// products of even order fall between them.
+func (b *bench) smallMotion(ctx context.Context, hz float64) (out smallMotion, err error) {
+	if b.t.By != "accelerometer" {
+		for n := 1; n <= 4; n++ {
+			g := 1.0
+			if b.t.By == "module" {
+				r, _ := b.t.Response.At(quantity.Frequency(float64(n) * hz))
+				g = float64(r)
+			}
+			out.gain[n] = complex(g, 0)
+		}
+		return out, nil
+	}
+	line := int(math.Round(hz * besselSeconds))
+	lines := make([]int, 4)
+	for n := range lines {
+		lines[n] = (n+1)*line/2*2 + 1
+	}
+	unit := b.level * smallBeta / b.beta
+	amplitude := []float64{unit, unit, 2.5 * unit, 4 * unit}
+	p := newPlay(b.s.frames(besselSeconds), lines, amplitude, []float64{0, 2, 4, 1})
+	p = p.scaled(math.Min(0.9, p.peak))
+	tones := p.hz(b.s.rate())
+	var ratio [4]complex128
+	var square2 [4]float64
+	for range b.s.repeats() {
+		rec, err := b.s.shaken(ctx, p, []int{b.module.Channel, b.plate.Channel}, p.period)
+		if err != nil {
+			return out, err
+		}
+		echo, _, err := b.s.fit(rec.Samples[b.module.Channel], tones)
+		if err != nil {
+			return out, err
+		}
+		plate, _, err := b.s.fit(rec.Samples[b.plate.Channel], tones)
+		if err != nil {
+			return out, err
+		}
+		for n := range tones {
+			x := plate[n].a * b.displacement(tones[n])
+			ratio[n] += echo[n].a / b.chain(tones[n]) / x / complex(float64(b.s.repeats()), 0)
+			square2[n] += (square(echo[n].sigma/cmplx.Abs(echo[n].a)) + square(plate[n].sigma/cmplx.Abs(plate[n].a))) / square(float64(b.s.repeats()))
+		}
+	}
+	for n := range tones {
+		out.gain[n+1], out.relative[n+1] = ratio[n], math.Sqrt(square2[n])
+		if out.relative[n+1] > 0.05 {
+			return out, wrong("raise the accelerometer's sensitivity or its input's level", "the accelerometer does not hear the small tones beside the harmonics of %v", quantity.Frequency(hz))
+		}
+	}
+	return out, nil
+}
