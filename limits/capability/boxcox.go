@@ -73,7 +73,7 @@ func fit(values []float64) (t PowerTransform, transformed []float64, why string)
 	t.Lambda = best
 	y := t.all(values)
 	if test := AndersonDarling(y); test.Rejected() {
-		return t, nil, fmt.Sprintf("neither a log-normal distribution nor the best %v makes them normal (A*² = %.2f after it)", t, test.Adjusted)
+		return t, nil, fmt.Sprintf("neither a log-normal distribution nor a Box–Cox transform (best λ = %.2f) makes them normal (A*² = %.2f after it)", t.Lambda, test.Adjusted)
 	}
 	return t, y, ""
 }

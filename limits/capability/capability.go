@@ -96,8 +96,9 @@ func Study(subgroups [][]float64, limits Limits, level float64) (Result, error) 
 func (r *Result) note(sentence string) { r.Notes = append(r.Notes, sentence) }
 
 func (l Limits) check() error {
-	for name, v := range map[string]*float64{"lower limit": l.Lower, "upper limit": l.Upper, "target": l.Target} {
+	for i, v := range []*float64{l.Lower, l.Upper, l.Target} {
 		if v != nil && (math.IsNaN(*v) || math.IsInf(*v, 0)) {
+			name := []string{"lower limit", "upper limit", "target"}[i]
 			return fmt.Errorf("the %s is %g: give a number or leave it out", name, *v)
 		}
 	}

@@ -50,6 +50,9 @@ func quantilesOf(values []float64, level float64) (*quantiles, string) {
 		q.low, q.lowEnds = orderStatistics(q.values, lowQuantile, (1-level)/3)
 		q.middle, q.middleEnds = orderStatistics(q.values, 0.5, (1-level)/3)
 		q.high, q.hiEnds = orderStatistics(q.values, highQuantile, (1-level)/3)
+		if q.lowEnds[1] >= q.middleEnds[0] || q.middleEnds[1] >= q.hiEnds[0] {
+			return nil, "the values are not normally distributed, and so coarse or so one-sided that their 0.135 %, 50 % and 99.865 % quantiles cannot be told apart"
+		}
 		return q, ""
 	}
 	t, y, why := fit(values)
@@ -117,13 +120,16 @@ func (q *quantiles) indices(l Limits) (both, lower, upper, least Index) {
 		least = one("Ppk", "", func(low, middle, high float64) float64 {
 			return math.Min(ppl(low, middle, high), ppu(low, middle, high))
 		})
+		if q.values != nil { // one index rises with the median while the other falls: no corner is greatest
+			least.High = math.Min(lower.High, upper.High)
+		}
 	}
 	least.Name = "Ppk"
 	return both, lower, upper, least
 }
 
-// corners are the extremes of an index while each quantile goes through its interval: every index is
-// monotone in each quantile, so they lie at corners.
+// corners are the extremes of an index while each quantile goes through its interval: Pp, Ppl and Ppu
+// are monotone in each quantile, so they lie at corners.
 func (q *quantiles) corners(f func(low, middle, high float64) float64) (least, greatest float64) {
 	least, greatest = math.Inf(1), math.Inf(-1)
 	for _, low := range q.lowEnds {
