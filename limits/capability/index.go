@@ -44,7 +44,7 @@ func (r *Result) indices(kind string, s Spread) (both, lower, upper, least Index
 		both.Low, both.High = CpInterval(both.Value, s.Dof, r.Level)
 		both.Method = "chi-square" + approximate
 		least.Value = math.Min(lower.Value, upper.Value)
-		least.Low, least.High = BissellInterval(least.Value, r.N, s.Dof, r.Level)
+		least.Low, least.High = BissellInterval(least.Value, float64(r.N), s.Dof, r.Level)
 		least.Method = "Bissell 1990" + approximate
 	}
 	return both, lower, upper, least

@@ -18,10 +18,11 @@ func CpInterval(cp, dof, level float64) (low, high float64) {
 // BissellInterval is the approximate confidence interval of Cpk (or Ppk) with limits on both
 // sides: Cpk ± z·√(1/(9n) + Cpk²/(2ν)) (A.F. Bissell, Applied Statistics 39 (1990) 331),
 // n values in all and ν degrees of freedom of the standard deviation. It keeps its level
-// from about 30 values up.
-func BissellInterval(cpk float64, n int, dof, level float64) (low, high float64) {
+// from about 30 values up. Where the mean is known worse than to σ/√n, n is the
+// number of values that would know it as well, and need not be whole.
+func BissellInterval(cpk, n, dof, level float64) (low, high float64) {
 	z := distuv.UnitNormal.Quantile(0.5 + level/2)
-	half := z * math.Sqrt(1/(9*float64(n))+cpk*cpk/(2*dof))
+	half := z * math.Sqrt(1/(9*n)+cpk*cpk/(2*dof))
 	return cpk - half, cpk + half
 }
 

@@ -4,8 +4,6 @@ import (
 	"fmt"
 	"math"
 
-	"gonum.org/v1/gonum/stat/distuv"
-
 	"lotgate/limits/gauge/variance"
 )
 
@@ -75,9 +73,8 @@ func (r Result) partIndices(s Spread) (pp, ppk Index) {
 		room = math.Min(room, *r.Limits.Upper-r.Mean)
 	}
 	ppk.Value = room / (3 * s.Sigma)
-	inflation := r.Overall.Sigma * r.Overall.Sigma / (s.Sigma * s.Sigma)
-	half := distuv.UnitNormal.Quantile(0.5+r.Level/2) * math.Sqrt(inflation/(9*float64(r.N))+ppk.Value*ppk.Value/(2*s.Dof))
-	ppk.Low, ppk.High = ppk.Value-half, ppk.Value+half
+	known := float64(r.N) * s.Sigma * s.Sigma / (r.Overall.Sigma * r.Overall.Sigma)
+	ppk.Low, ppk.High = BissellInterval(ppk.Value, known, s.Dof, r.Level)
 	if r.Limits.Lower == nil || r.Limits.Upper == nil {
 		pp = Index{Name: "Pp", Missing: "no Pp: it needs limits on both sides"}
 		return pp, ppk
