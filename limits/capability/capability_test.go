@@ -140,3 +140,28 @@ func TestRefuses(t *testing.T) {
 		t.Errorf("notes %q", r.Notes)
 	}
 }
+
+// TestFewAndFar: two values, values outside their limits, and values far inside all have finite numbers
+// in order.
+func TestFewAndFar(t *testing.T) {
+	for _, values := range [][]float64{{1, 2}, {1, 2, 4}, {20, 21, 23, 22}, {4.999, 5, 5.001}, {-1e9, 1e9, 3}, {5e-9, 6e-9, 7e-9}} {
+		for _, l := range []Limits{{Lower: ptr(0), Upper: ptr(10), Target: ptr(5)}, {Upper: ptr(10)}, {Lower: ptr(0)}} {
+			for _, subgroups := range [][][]float64{{values}, Individuals(values)} {
+				r, err := Study(subgroups, l, 0.95)
+				if err != nil {
+					t.Fatal(err)
+				}
+				for _, i := range []Index{r.Cp, r.Cpl, r.Cpu, r.Cpk, r.Pp, r.Ppl, r.Ppu, r.Ppk, r.Cpm} {
+					if i.Missing == "" && !(i.Low <= i.Value && i.Value <= i.High && i.High-i.Low < math.Inf(1)) {
+						t.Errorf("%v: %+v", values, i)
+					}
+				}
+				for _, f := range []Fraction{r.Outside.Below, r.Outside.Above, r.Outside.Total, r.Outside.Observed} {
+					if f.Missing == "" && !(0 <= f.Low && f.Low <= f.Value && f.Value <= f.High && f.High <= 1) {
+						t.Errorf("%v: %+v", values, f)
+					}
+				}
+			}
+		}
+	}
+}

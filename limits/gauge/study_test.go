@@ -184,3 +184,25 @@ func TestIntervals(t *testing.T) {
 	low := (part - interaction - math.Sqrt(g1*g1*part*part+h3*h3*interaction*interaction+g13*part*interaction)) / 9
 	near(t, "PV low", s.Part.Sigma.Low, math.Sqrt(low), 2e-4)
 }
+
+// TestAsJSON: no infinity and no NaN is left in a result.
+func TestAsJSON(t *testing.T) {
+	for _, rule := range []InteractionRule{PoolInteraction, KeepInteraction, DropInteraction} {
+		s, err := ANOVA(small("a", "b"), Options{Interaction: rule, Tolerance: 3})
+		if err != nil {
+			t.Fatal(err)
+		}
+		if _, err := json.Marshal(s); err != nil {
+			t.Error(err)
+		}
+	}
+	for _, operators := range [][]string{{"a"}, {"a", "b"}} {
+		s, err := AverageAndRange(small(operators...), Options{})
+		if err != nil {
+			t.Fatal(err)
+		}
+		if _, err := json.Marshal(s); err != nil {
+			t.Error(err)
+		}
+	}
+}
