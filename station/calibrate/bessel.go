@@ -4,17 +4,19 @@ import (
 	"context"
 	"math"
 	"math/cmplx"
+	"slices"
 
 	"lotgate/limits/quantity"
 )
 
 // absolute is the displacement per volt at one frequency.
 type absolute struct {
-	hz       float64
-	perVolt  float64 // m/V, peak over peak
-	relative float64 // standard uncertainty
-	noise    float64 // the part of it that the noise leaves
-	beta     float64
+	hz      float64
+	perVolt float64 // m/V, peak over peak
+	noise   float64 // relative standard uncertainty that the noise leaves
+	carrier float64 // and the carrier
+	shape   float64 // and the course over frequency, between the harmonics
+	beta    float64
 }
 
 const (
@@ -236,7 +238,7 @@ func (b *bench) bessel(ctx context.Context) (absolute, error) {
 	out.beta, out.noise = beta/weight, 1/math.Sqrt(weight)
 	volts := b.level * float64(b.s.Setup.Target.FullScale)
 	out.perVolt = out.beta * b.lambda() / (4 * math.Pi) / volts
-	out.relative = math.Sqrt(square(out.noise) + square(flat/weight) + square(float64(b.t.CarrierU)/2))
+	out.shape, out.carrier = flat/weight, float64(b.t.CarrierU)/2
 	return out, nil
 }
 
@@ -250,6 +252,20 @@ type smallMotion struct {
 // smallBeta is the phase index of each small tone: small enough that the mixer is a straight
 // line to one part in 10,000.
 const smallBeta = 0.025
+
+// products are the frequencies of the mixer's second-order products of some tones: fitted beside
+// them, so that they do not pass for noise.
+func products(tones []float64) []float64 {
+	var out []float64
+	for i, a := range tones {
+		out = append(out, 2*a)
+		for _, b := range tones[:i] {
+			out = append(out, a-b, a+b)
+		}
+	}
+	slices.Sort(out)
+	return slices.CompactFunc(out, func(a, b float64) bool { return math.Abs(a-b) < 1e-6 })
+}
 
 // smallMotion measures it with four small tones beside the harmonics, on odd lines, so that
 // products of even order fall between them.
@@ -282,7 +298,7 @@ func (b *bench) smallMotion(ctx context.Context, hz float64) (out smallMotion, e
 		if err != nil {
 			return out, err
 		}
-		echo, _, err := b.s.fit(rec.Samples[b.module.Channel], tones)
+		echo, _, err := b.s.fit(rec.Samples[b.module.Channel], append(slices.Clone(tones), products(tones)...))
 		if err != nil {
 			return out, err
 		}

@@ -43,6 +43,11 @@ type Wrong struct {
 
 func (w *Wrong) Error() string { return w.What + ": " + w.Action }
 
+// overloaded is an input driven to its ends: whoever chose the level may choose a lower one.
+type overloaded struct{ error }
+
+func (o *overloaded) Unwrap() error { return o.error }
+
 func wrong(action, format string, args ...any) error {
 	return &Wrong{fmt.Sprintf(format, args...), action}
 }
@@ -143,7 +148,7 @@ func (s *Session) record(ctx context.Context, p *play, inputs []int, frames int,
 		h := signal.Look(rec.Samples[c], s.rate())
 		switch {
 		case h.AtFullScale >= 2:
-			return rec, wrong("turn the input's level or what is connected down, and start again", "input %d is overloaded", c)
+			return rec, &overloaded{wrong("turn the input's level or what is connected down, and start again", "input %d is overloaded", c)}
 		case h.GapStart >= 0 && !s.chopping: // a slow square wave is still between its edges
 			return rec, wrong("close other programs, lengthen the sound buffer, and start again", "samples were lost on input %d at %.2f s", c, h.GapStart)
 		}
@@ -183,7 +188,7 @@ func (s *Session) fitAt(x []float64, rate float64, hz []float64) ([]found, signa
 		return nil, f, err
 	}
 	residual := signal.Periodogram(f.Residual, rate)
-	quiet := signal.QuietLines(residual, f.FrequencyHz, 0)
+	quiet := signal.QuietLines(residual, f.FrequencyHz, float64(s.Setup.Mains))
 	seconds := float64(len(x)) / rate
 	out := make([]found, len(hz))
 	for i := range hz {

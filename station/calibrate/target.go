@@ -2,6 +2,7 @@ package calibrate
 
 import (
 	"context"
+	"errors"
 	"fmt"
 	"math"
 	"math/cmplx"
@@ -267,11 +268,29 @@ func (t Target) shapeU(module, plate attach.InputSetup, hz, over float64) float6
 	return math.Hypot(decades(float64(t.Flatness)/2, hz, over), at(plate.Own))
 }
 
-// decades is what a walk of so much a decade leaves between two frequencies: in proportion within
-// one decade, with the root beyond.
+// together is the relative standard uncertainty that the course over frequency leaves at a
+// frequency: its own against the absolute one, and what it did to that one, which shares its
+// errors. An accelerometer's error that rises from f to 3f makes β too large by half of it and
+// all displacements above by the whole once more; below f the two are independent at best.
+func (b *bench) together(hz float64, size absolute) float64 {
+	own := b.shapeU(hz, size.hz)
+	if b.t.By != "accelerometer" || hz < size.hz {
+		return math.Hypot(own, size.shape)
+	}
+	const pair = 0.4771 // decades between a harmonic and the third of it
+	d := math.Log10(hz / size.hz)
+	shared, alone := math.Min(d, pair), math.Max(d-pair, 0)
+	rest := math.Max(pair-d, 0)
+	root := math.Sqrt(2.25*shared + alone + 0.25*rest)
+	each := float64(b.t.Flatness) / 2
+	_, u := b.plate.Own.At(quantity.Frequency(hz))
+	return math.Hypot(each*root, u/2)
+}
+
+// decades is what a walk of so much a decade leaves between two frequencies: the root of the
+// distance.
 func decades(each, hz, over float64) float64 {
-	d := math.Abs(math.Log10(hz / over))
-	return each * math.Min(d, math.Sqrt(d))
+	return each * math.Sqrt(math.Abs(math.Log10(hz/over)))
 }
 
 func (b *bench) fromTable() []signal.Scattered {
@@ -308,6 +327,11 @@ func (b *bench) tolerable(ctx context.Context, p play, rough []signal.Scattered,
 	for try := 0; ; try++ {
 		q := p.scaled(level)
 		rec, err := b.s.shaken(ctx, q, []int{channel}, b.s.frames(2))
+		var over *overloaded
+		if errors.As(err, &over) && try < 6 {
+			level *= 0.3
+			continue
+		}
 		if err != nil {
 			return 0, err
 		}
@@ -384,18 +408,18 @@ func (t Target) file(b *bench, course []signal.Scattered, size absolute) (*calib
 	reference := math.Log(size.hz)
 	f.Curve = drawn(float64(t.Low), float64(t.High), quantity.MetrePerVolt, func(x float64) (float64, float64) {
 		y, u := smooth.Between(x, reference)
-		shape := b.shapeU(math.Exp(x), size.hz)
-		return math.Log(size.perVolt) + y + base.at(x) - base.at(reference), math.Sqrt(u*u + shape*shape + square(size.relative))
+		return math.Log(size.perVolt) + y + base.at(x) - base.at(reference), math.Sqrt(u*u + square(b.together(math.Exp(x), size)) + square(size.noise) + square(size.carrier))
 	})
 	at := calibration.Of(quantity.Frequency(size.hz))
 	f.Reference = &at
-	f.Values["displacement_per_volt"] = calibration.Value{Value: calibration.Amount{Value: size.perVolt, Unit: quantity.MetrePerVolt}, Uncertainty: calibration.Amount{Value: size.perVolt * expanded(size.relative), Unit: quantity.MetrePerVolt}}
+	f.Values[calibration.PerVolt] = calibration.Value{Value: calibration.Amount{Value: size.perVolt, Unit: quantity.MetrePerVolt}, Uncertainty: calibration.Amount{Value: size.perVolt * expanded(size.noise, size.carrier, size.shape), Unit: quantity.MetrePerVolt}}
 	if b.largest > 0 {
 		f.Values[calibration.Largest] = calibration.Found(quantity.Length(b.largest), quantity.Length(0.05*b.largest))
 		f.Notes = append(f.Notes, fmt.Sprintf("beyond %v at %v the shaker's own harmonics exceed 1 %%", quantity.Length(b.largest), quantity.Frequency(size.hz)))
 	} else {
 		f.Notes = append(f.Notes, fmt.Sprintf("up to %v no harmonics of the shaker show", quantity.Length(b.beta*b.lambda()/(4*math.Pi))))
 	}
+	f.Values[calibration.PhaseIndex] = calibration.Found(quantity.Ratio(size.beta), quantity.Ratio(size.beta*expanded(size.noise, size.shape)))
 	f.Notes = append(f.Notes, fmt.Sprintf("phase index β = %.3f at %v; of the ratio's relative uncertainty %.2g %% is noise", size.beta, quantity.Frequency(size.hz), 100*size.noise))
 	return f, nil
 }

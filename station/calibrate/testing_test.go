@@ -12,6 +12,7 @@ import (
 	"lotgate/fixtures/calibration"
 	"lotgate/fixtures/virtual"
 	"lotgate/limits/quantity"
+	"lotgate/limits/quantity/curve"
 )
 
 // benches is how many seeded benches each calibration is tried on: LOTGATE_COVERAGE, or few.
@@ -104,4 +105,18 @@ func (c *tally) check(t *testing.T) {
 	if ratio > 2 {
 		t.Errorf("%s: U is %.2f times its limit", c.name, ratio)
 	}
+}
+
+// flatCurve is an input without a response of its own but its high-pass.
+func flatCurve() curve.Curve[quantity.Ratio] {
+	return curve.Curve[quantity.Ratio]{{Frequency: 0.5, Value: 1}, {Frequency: 3000, Value: 1}}
+}
+
+// preamplifierCurve is the drawn preamplifier's true gain over that at 80 Hz.
+func preamplifierCurve(s virtual.Settings) curve.Curve[quantity.Ratio] {
+	var out curve.Curve[quantity.Ratio]
+	for hz := 0.5; hz < 3000; hz *= 1.03 {
+		out = append(out, curve.Point[quantity.Ratio]{Frequency: quantity.Frequency(hz), Value: quantity.Ratio(preamplifierGain(hz, s.Sound.Uneven) / preamplifierGain(80, s.Sound.Uneven))})
+	}
+	return out
 }

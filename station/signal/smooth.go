@@ -52,6 +52,9 @@ func FitSmooth(points []Scattered, columns func(x float64) []float64, least, mos
 			if err != nil {
 				return nil, err
 			}
+			if math.IsInf(l, -1) {
+				continue
+			}
 			if size == 0 {
 				s.Misfit = s.misfit()
 				reach = most * 2
@@ -63,8 +66,14 @@ func FitSmooth(points []Scattered, columns func(x float64) []float64, least, mos
 			}
 		}
 	}
+	if best == nil {
+		return nil, ErrTooFewPoints
+	}
 	return best, nil
 }
+
+// mostCondition is the worst condition of a matrix that is still solved.
+const mostCondition = 1e14
 
 func (s *Smooth) kernel(a, b float64) float64 {
 	d := (a - b) / s.reach
@@ -84,8 +93,8 @@ func (s *Smooth) fit() (float64, error) {
 		h.SetRow(i, s.columns(a.X))
 		y.SetVec(i, a.Y)
 	}
-	if !s.covariance.Factorize(k) {
-		return 0, errors.New("the points of the curve contradict each other: two at one place without uncertainty")
+	if !s.covariance.Factorize(k) || s.covariance.Cond() > mostCondition {
+		return math.Inf(-1), nil // far too smooth for its size: not a candidate
 	}
 	s.design = mat.NewDense(n, p, nil)
 	if err := s.covariance.SolveTo(s.design, h); err != nil {
@@ -99,8 +108,8 @@ func (s *Smooth) fit() (float64, error) {
 			sym.SetSym(i, j, (normal.At(i, j)+normal.At(j, i))/2)
 		}
 	}
-	if !s.normal.Factorize(sym) {
-		return 0, ErrTooFewPoints
+	if !s.normal.Factorize(sym) || s.normal.Cond() > mostCondition {
+		return math.Inf(-1), nil
 	}
 	var right, beta, left mat.VecDense
 	right.MulVec(s.design.T(), y)

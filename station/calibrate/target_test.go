@@ -1,0 +1,86 @@
+package calibrate
+
+import (
+	"errors"
+	"fmt"
+	"math"
+	"strings"
+	"testing"
+
+	"lotgate/fixtures/calibration"
+	"lotgate/fixtures/virtual"
+	"lotgate/limits/quantity"
+)
+
+// shakerAt is a damped oscillator's displacement per volt: D0/√((1 − u²)² + (u/Q)²).
+func shakerAt(hz, perVolt float64, t virtual.TargetSettings) float64 {
+	u := hz / float64(t.Resonance)
+	return perVolt / math.Hypot(1-u*u, u/float64(t.Quality))
+}
+
+// targetSession is a session whose inputs are calibrated without error.
+func targetSession(t testing.TB, settings virtual.Settings) (*Session, *virtual.Bench) {
+	s, b := open(t, settings)
+	for role, in := range s.Setup.Inputs {
+		in.Own.HighPass = settings.Sound.Coupling
+		in.Own.Points = flatCurve()
+		in.Response = in.Own
+		if role == "if" {
+			in.Response.Points = preamplifierCurve(settings)
+		}
+		s.Setup.Inputs[role] = in
+	}
+	return s, b
+}
+
+// thirdHarmonicLimit is twice the relative standard deviation of β that the module's noise under
+// the third harmonic of 19 Hz alone leaves over three records of four seconds, at the better of two
+// places λ/8 apart: J3/J1 is in proportion to β² (Abramowitz & Stegun 9.1.7), so half of it counts.
+func thirdHarmonicLimit(m virtual.Truth, beta float64) float64 {
+	sine := math.Max(math.Abs(math.Sin(float64(m.Phase))), math.Abs(math.Cos(float64(m.Phase))))
+	third := 2 * float64(m.EchoAt(57)) * math.Jn(3, beta) * sine
+	return 2 * float64(m.Density(57)) / math.Sqrt(12) / third / 2
+}
+
+func TestTargetRecoversTheTruth(t *testing.T) {
+	list := []float64{1, 5, 19, 70, 200, 1000}
+	at := map[float64]*tally{}
+	for _, hz := range list {
+		at[hz] = &tally{name: fmt.Sprintf("target at %g Hz", hz), limit: "noise of the third harmonic, accelerometer"}
+	}
+	for seed := range benches(t) {
+		settings := draw(seed)
+		s, b := targetSession(t, settings)
+		flat := settings.Workshop.Flatness
+		f, err := Target{By: "accelerometer", Accelerometer: "sense", Flatness: flat, Carrier: settings.Carrier, CarrierU: 1e-6}.Run(t.Context(), s)
+		if err != nil {
+			t.Fatal(seed, err)
+		}
+		curve := calibration.CurveOf[quantity.DisplacementPerVolt](f)
+		perVolt := float64(settings.Target.PerVolt) / float64(b.Advertise().Displacement[0].Value) * float64(b.Actual().Displacement[0].Value)
+		for hz, c := range at {
+			d, u := curve.At(quantity.Frequency(hz))
+			truth := shakerAt(hz, perVolt, settings.Target)
+			// The limit: the noise under the faintest harmonic, and what the accelerometer is good for.
+			accelerometer := math.Hypot(float64(flat)*math.Sqrt(math.Abs(math.Log10(hz/19))), 0.5*float64(flat)*math.Sqrt(math.Log10(3)))
+			limit := math.Hypot(accelerometer, thirdHarmonicLimit(b.Truth(), f.Values[calibration.PhaseIndex].Value.Value))
+			c.add(truth, calibration.Found(d, d*quantity.DisplacementPerVolt(u)), limit*truth)
+		}
+	}
+	for _, hz := range list {
+		at[hz].check(t)
+	}
+}
+
+func TestTargetRecognisesWhatIsWrong(t *testing.T) {
+	for mistake, want := range map[virtual.Mistake]string{virtual.TargetStuck: "does not move", virtual.UpsideDown: "upside down"} {
+		settings := draw(5)
+		s, b := targetSession(t, settings)
+		b.Blunder(mistake)
+		_, err := Target{By: "accelerometer", Accelerometer: "sense", Flatness: 0.005, Carrier: settings.Carrier}.Run(t.Context(), s)
+		var w *Wrong
+		if !errors.As(err, &w) || !strings.Contains(err.Error(), want) {
+			t.Errorf("%s gave %v", mistake, err)
+		}
+	}
+}
