@@ -178,9 +178,7 @@ func (s *Session) choppedTones(ctx context.Context, channel int, chop, seconds f
 	if err := s.Bench.Chopper.Chop(ctx, quantity.Frequency(chop)); err != nil {
 		return squareTones{}, err
 	}
-	s.chopping = true
 	rec, err := s.record(ctx, nil, []int{channel}, s.frames(seconds), nil)
-	s.chopping = false
 	if stop := s.Bench.Chopper.Chop(context.WithoutCancel(ctx), 0); err == nil {
 		err = stop
 	}

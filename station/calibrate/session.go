@@ -31,7 +31,6 @@ type Session struct {
 	Tell     func(text string)
 	Progress func(share float64)
 	done     int
-	chopping bool
 }
 
 // Wrong is a calibration that cannot be used: something is connected, read or set otherwise
@@ -145,12 +144,8 @@ func (s *Session) record(ctx context.Context, p *play, inputs []int, frames int,
 		s.Progress(1 - math.Exp(-float64(s.done)/12))
 	}
 	for _, c := range inputs {
-		h := signal.Look(rec.Samples[c], s.rate())
-		switch {
-		case h.AtFullScale >= 2:
+		if h := signal.Look(rec.Samples[c], s.rate()); h.AtFullScale >= 2 {
 			return rec, &overloaded{wrong("turn the input's level or what is connected down, and start again", "input %d is overloaded", c)}
-		case h.GapStart >= 0 && !s.chopping: // a slow square wave is still between its edges
-			return rec, wrong("close other programs, lengthen the sound buffer, and start again", "samples were lost on input %d at %.2f s", c, h.GapStart)
 		}
 	}
 	return rec, nil

@@ -176,7 +176,7 @@ func (b *bench) course(ctx context.Context) ([]signal.Scattered, error) {
 	for i := range amplitude {
 		amplitude[i] = math.Min(30, math.Exp(-0.5*(rough[i].Y-rough[0].Y)))
 		if hz := math.Exp(rough[i].X); hz < 10 && b.t.By == "accelerometer" {
-			amplitude[i] *= 3 // ω² makes the lowest tones faint
+			amplitude[i] *= math.Pow(10/hz, 1.5) // ω² makes the lowest tones faint
 		}
 	}
 	shaped := newPlay(p.period, p.lines, amplitude, signal.SchroederPhases(p.lines, amplitude))
@@ -224,6 +224,9 @@ func (b *bench) relative(ctx context.Context, p play, rough []signal.Scattered, 
 		v, u, _ := gathers[i].mean()
 		if repeats > 1 && v < 8*u {
 			continue
+		}
+		if err := gathers[i].agree("the motion at "+quantity.Frequency(hz[i]).String(), 5e-3); err != nil {
+			return nil, err
 		}
 		out = append(out, signal.Scattered{X: math.Log(hz[i]), Y: math.Log(v), Sigma: u / v})
 	}
@@ -309,7 +312,7 @@ func (b *bench) fromTable() []signal.Scattered {
 // have while nothing is known of the resonance.
 const roughShare = 0.15
 
-// tolerable is the level at which a multitone stays within half of the largest excursion, the
+// tolerable is the level at which a multitone stays within four fifths of the largest excursion, the
 // output, and half of the input's full scale.
 func (b *bench) tolerable(ctx context.Context, p play, rough []signal.Scattered, channel int) (float64, error) {
 	level := roughShare * b.level
@@ -322,7 +325,7 @@ func (b *bench) tolerable(ctx context.Context, p play, rough []signal.Scattered,
 		for _, v := range signal.Multitone(p.lines, motion, p.phase, p.period) {
 			peak = math.Max(peak, math.Abs(v))
 		}
-		level = math.Min(0.9, 0.5*b.level/peak)
+		level = math.Min(0.9, 0.8*b.level/peak)
 	}
 	for try := 0; ; try++ {
 		q := p.scaled(level)

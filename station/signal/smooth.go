@@ -40,9 +40,9 @@ func FitSmooth(points []Scattered, columns func(x float64) []float64, least, mos
 	}
 	sigma := 0.0
 	for _, p := range points {
-		sigma += p.Sigma * p.Sigma / float64(len(points))
+		sigma += math.Log(p.Sigma) / float64(len(points))
 	}
-	sigma = math.Sqrt(sigma)
+	sigma = math.Exp(sigma)
 	var best *Smooth
 	likelihood := math.Inf(-1)
 	for _, size := range []float64{0, 0.3, 1, 3, 10, 30, 100, 300, 1e3, 3e3, 1e4, 3e4, 1e5} {
