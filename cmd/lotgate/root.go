@@ -66,7 +66,7 @@ try "lotgate demo".
 	root.SetOut(out)
 	root.SetErr(errOut)
 	root.SetFlagErrorFunc(func(_ *cobra.Command, err error) error { return misuse{err} })
-	root.AddCommand(a.demo(), a.test(), a.replay(), a.explain(), a.verify(), a.devices(), a.plan(), a.init(), a.schema(), a.virtual())
+	root.AddCommand(a.demo(), a.test(), a.replay(), a.explain(), a.verify(), a.devices(), a.plan(), a.calibrate(), a.init(), a.schema(), a.virtual())
 	if err := root.ExecuteContext(ctx); err != nil {
 		fmt.Fprintln(errOut, "lotgate:", err)
 		var wrong misuse

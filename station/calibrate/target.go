@@ -418,13 +418,16 @@ func (t Target) file(b *bench, course []signal.Scattered, size absolute) (*calib
 	f.Values[calibration.PerVolt] = calibration.Value{Value: calibration.Amount{Value: size.perVolt, Unit: quantity.MetrePerVolt}, Uncertainty: calibration.Amount{Value: size.perVolt * expanded(size.noise, size.carrier, size.shape), Unit: quantity.MetrePerVolt}}
 	if b.largest > 0 {
 		f.Values[calibration.Largest] = calibration.Found(quantity.Length(b.largest), quantity.Length(0.05*b.largest))
-		f.Notes = append(f.Notes, fmt.Sprintf("beyond %v at %v the shaker's own harmonics exceed 1 %%", quantity.Length(b.largest), quantity.Frequency(size.hz)))
+		f.Notes = append(f.Notes, fmt.Sprintf("beyond %s at %v the shaker's own harmonics exceed 1 %%", short(b.largest), quantity.Frequency(size.hz)))
 	} else {
-		f.Notes = append(f.Notes, fmt.Sprintf("up to %v no harmonics of the shaker show", quantity.Length(b.beta*b.lambda()/(4*math.Pi))))
+		f.Notes = append(f.Notes, fmt.Sprintf("up to %s no harmonics of the shaker show", short(b.beta*b.lambda()/(4*math.Pi))))
 	}
 	f.Values[calibration.PhaseIndex] = calibration.Found(quantity.Ratio(size.beta), quantity.Ratio(size.beta*expanded(size.noise, size.shape)))
-	f.Notes = append(f.Notes, fmt.Sprintf("phase index β = %.3f at %v; of the ratio's relative uncertainty %.2g %% is noise", size.beta, quantity.Frequency(size.hz), 100*size.noise))
+	f.Notes = append(f.Notes, fmt.Sprintf("phase index β = %.3f at %v; of its relative uncertainty %.2g %% (k = 2) is noise", size.beta, quantity.Frequency(size.hz), 200*size.noise))
 	return f, nil
 }
+
+// short prints a length with three digits.
+func short(m float64) string { return quantity.PrintTo(m, m/50, quantity.Metre) }
 
 func (b *bench) lambda() float64 { return measure.SpeedOfLight / float64(b.t.Carrier) }

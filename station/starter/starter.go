@@ -8,11 +8,11 @@ import (
 	"path/filepath"
 )
 
-//go:embed plan.yaml limits.yaml station-virtual.yaml station-hardware.yaml
+//go:embed plan.yaml limits.yaml station-virtual.yaml station-hardware.yaml station-new.yaml plan-wide.yaml
 var files embed.FS
 
 // Names of the starter files, in the order a newcomer reads them.
-var Names = []string{"plan.yaml", "limits.yaml", "station-virtual.yaml", "station-hardware.yaml"}
+var Names = []string{"plan.yaml", "limits.yaml", "station-virtual.yaml", "station-hardware.yaml", "station-new.yaml", "plan-wide.yaml"}
 
 // Content of a starter file.
 func Content(name string) []byte {
