@@ -78,7 +78,7 @@ func (m *NoiseFloor) Prepare(b Bench) (Schedule, error) {
 		age = *m.FloorAge
 	}
 	frames := int(math.Round(float64(m.Acquire) * float64(b.SampleRate)))
-	return Schedule{FloorAge: &age, Acquisitions: []Acquisition{{What: "noise floor", Role: IF, Frames: frames, Settle: 0.2}}}, nil
+	return Schedule{FloorAge: &age, Acquisitions: []Acquisition{{What: "noise floor", Roles: []string{IF}, Frames: frames, Settle: 0.2}}}, nil
 }
 
 // noiseSpectrum is a capture's power density referred to the module's output, V²/Hz.

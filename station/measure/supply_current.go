@@ -58,7 +58,7 @@ func (m *SupplyCurrent) Prepare(b Bench) (Schedule, error) {
 		return Schedule{}, fmt.Errorf("this station has no chopped shunt: give the station file a shunt, or write using: reported")
 	}
 	frames := int(math.Round(float64(m.Acquire) * float64(b.SampleRate)))
-	return Schedule{Acquisitions: []Acquisition{{What: "supply current", Role: Sense, Frames: frames, Chop: true, Settle: 0.1}}}, nil
+	return Schedule{Acquisitions: []Acquisition{{What: "supply current", Roles: []string{Sense}, Frames: frames, Chop: true, Settle: 0.1}}}, nil
 }
 
 // Evaluate fits the chopped wave.
