@@ -249,8 +249,10 @@ func (r *Runner) calibrate(c *measure.Capture, schedule measure.Schedule) {
 	if c.Target != nil {
 		t := r.Setup.Target
 		c.Uncertainty["displacement"], c.Uncertainty["standoff"] = t.Displacement, t.StandoffU
-		if t.Shape != nil {
-			c.Uncertainty["shape"] = *t.Shape
+		for key, u := range map[string]*tolerance.Tolerance{"shape": t.Shape, "stage": t.Stage, "position": t.Stops} {
+			if u != nil {
+				c.Uncertainty[key] = *u
+			}
 		}
 	}
 }

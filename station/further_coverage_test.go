@@ -122,3 +122,25 @@ func covers(t *testing.T, few int, kind, steps string, change func(*virtual.Sett
 		t.Error("nothing was compared")
 	}
 }
+
+// idealUnit is a runner of a plan without limits on a virtual bench without errors whose unit has a
+// fault.
+func idealUnit(t *testing.T, fault, planText string) (*station.Runner, *virtual.Bench, *memory) {
+	t.Helper()
+	s := virtual.Ideal()
+	s.SampleRate = 8000
+	s.Units = map[string]string{"unit": fault}
+	bench, err := virtual.New(s)
+	if err != nil {
+		t.Fatal(err)
+	}
+	bench.Seat("lot", "unit")
+	p, err := plan.Parse("plan.yaml", []byte(planText))
+	if err != nil {
+		t.Fatal(err)
+	}
+	f := &attach.File{Station: "test", Nest: "1"}
+	kept := &memory{}
+	return &station.Runner{File: f, Setup: f.Setup(bench), Bench: bench.Fixtures(), Plan: p, Limits: &limits.File{Readings: map[string]limits.Limit{}},
+		Store: kept, Clock: station.FastClock{}}, bench, kept
+}

@@ -92,6 +92,19 @@ func phaseIndex(displacement float64, carrier quantity.Frequency) float64 {
 // Prepare moves the stage through the positions and the shaker at the tone, rounded to a
 // line of the record.
 func (m *Sensitivity) Prepare(b Bench) (Schedule, error) {
+	positions := []quantity.Length{0}
+	eighth := b.Module.Wavelength() / 8
+	if m.Method == "positions" {
+		positions = []quantity.Length{0, eighth}
+		if m.Positions == 3 {
+			positions = []quantity.Length{-eighth, 0, eighth}
+		}
+	}
+	return m.at(b, positions)
+}
+
+// at prepares the tone at some positions.
+func (m *Sensitivity) at(b Bench, positions []quantity.Length) (Schedule, error) {
 	if m.Displacement > b.Largest {
 		return Schedule{}, fmt.Errorf("a displacement of %v is more than the %v this target may make", m.Displacement, b.Largest)
 	}
@@ -100,14 +113,6 @@ func (m *Sensitivity) Prepare(b Bench) (Schedule, error) {
 	tone := Tone{Frequency: quantity.Frequency(line * float64(b.SampleRate) / float64(frames)), Displacement: m.Displacement}
 	if drive := float64(m.Displacement) / float64(b.PerVolt(tone.Frequency)); drive > float64(b.LargestDrive) {
 		return Schedule{}, fmt.Errorf("%v at %v needs a drive of %v, more than the output's %v: write a smaller displacement or a tone nearer the shaker's resonance", m.Displacement, tone.Frequency, quantity.Voltage(drive), b.LargestDrive)
-	}
-	positions := []quantity.Length{0}
-	eighth := b.Module.Wavelength() / 8
-	if m.Method == "positions" {
-		positions = []quantity.Length{0, eighth}
-		if m.Positions == 3 {
-			positions = []quantity.Length{-eighth, 0, eighth}
-		}
 	}
 	s := Schedule{Conditions: Conditions{Target: &Motion{Tone: tone.Frequency, Displacement: m.Displacement, Standoff: b.Standoff, Phase: m.Phase}}}
 	for i, p := range positions {
