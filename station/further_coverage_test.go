@@ -63,6 +63,7 @@ func covers(t *testing.T, few int, kind, steps string, change func(*virtual.Sett
 		}
 	}
 	var mu sync.Mutex
+	atBound := map[string]bool{} // truth at the end of what is possible: an interval holds it more often
 	all := map[string]*tally{}
 	var group sync.WaitGroup
 	seeds := make(chan int)
@@ -85,6 +86,7 @@ func covers(t *testing.T, few int, kind, steps string, change func(*virtual.Sett
 						all[r.Name] = &tally{}
 					}
 					x := all[r.Name]
+					atBound[r.Name] = truth == 0
 					x.count++
 					u := r.Budget.Expanded
 					x.ratio += u
@@ -114,7 +116,7 @@ func covers(t *testing.T, few int, kind, steps string, change func(*virtual.Sett
 		if b.CDF(float64(x.held)) < 1e-4 {
 			t.Errorf("%s: the interval held the truth in %d of %d only", n, x.held, x.count)
 		}
-		if x.count >= 200 && 1-b.CDF(float64(x.held)-1) < 1e-4 {
+		if x.count >= 200 && !atBound[n] && 1-b.CDF(float64(x.held)-1) < 1e-4 {
 			t.Errorf("%s: the interval held the truth in %d of %d: it is too long", n, x.held, x.count)
 		}
 	}

@@ -36,11 +36,11 @@ type Carrier struct {
 	Displacement quantity.Length    `key:"displacement" range:">0" doc:"peak displacement of the target; default 0.20 mm"`
 	Acquire      quantity.Time      `key:"acquire" range:">0" doc:"how long to record at each position; default 0.5 s"`
 	Mains        quantity.Frequency `key:"mains" range:">0" doc:"mains frequency, whose lines are fitted beside the tone; default 50 Hz"`
-	Air          quantity.Ratio     `key:"air" range:">=1" doc:"refractive index of the air; default 1.000315"`
+	Air          quantity.Ratio     `key:"air" range:">0" doc:"refractive index of the air; default 1.000315"`
 }
 
 var _ = register(Kind{"carrier", "carrier frequency, the stage being the ruler", func() Measurement {
-	return &Carrier{Tone: 40, Displacement: 0.2e-3, Acquire: 0.5, Mains: 50, Air: 1.000315}
+	return &Carrier{Tone: 40, Displacement: 0.2e-3, Acquire: 0.5, Mains: 50, Air: usualAir}
 }})
 
 const (
