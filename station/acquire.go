@@ -168,8 +168,8 @@ func firstVoid(r measure.Result) *measure.Void {
 }
 
 // capture takes all acquisitions of a schedule and gathers them with their conditions.
-func (r *Runner) capture(ctx context.Context, a *record.Attempt, s plan.Step, schedule measure.Schedule, supply quantity.Voltage) (*measure.Capture, error) {
-	c := &measure.Capture{Conditions: schedule.Conditions, Parameters: s.Measure}
+func (r *Runner) capture(ctx context.Context, a *record.Attempt, s plan.Step, schedule measure.Schedule, supply quantity.Voltage) (c *measure.Capture, err error) {
+	c = &measure.Capture{Conditions: schedule.Conditions, Parameters: s.Measure}
 	c.Step, c.Measure, c.Carrier = s.ID, s.Kind, r.Plan.Module.Carrier
 	c.Supply = measure.SupplyState{Given: true, Off: supply == 0, Voltage: supply}
 	r.calibrate(c, schedule)
@@ -179,7 +179,20 @@ func (r *Runner) capture(ctx context.Context, a *record.Attempt, s plan.Step, sc
 	if schedule.Reported {
 		return c, r.reported(ctx, c)
 	}
+	present := supply
+	defer func() { // a recording that is to be taken again starts from the step's supply
+		var fault *fixtures.Fault
+		if present != supply && ctx.Err() == nil && !errors.As(err, &fault) {
+			err = errors.Join(err, r.power(ctx, supply, s.Settle))
+		}
+	}()
 	for i, q := range schedule.Acquisitions {
+		if want := orElse(q.Supply, supply); want != present {
+			present = want
+			if err := r.power(ctx, want, s.Settle); err != nil {
+				return nil, err
+			}
+		}
 		if err := r.lid(ctx, "while measuring"); err != nil {
 			return nil, err
 		}
@@ -187,13 +200,25 @@ func (r *Runner) capture(ctx context.Context, a *record.Attempt, s plan.Step, sc
 			r.emit(a, "progress", s.ID, fmt.Sprintf("%s %.0f %%", q.What, 100*(float64(i)+share)/float64(len(schedule.Acquisitions))))
 		}
 		done(0)
-		samples, err := r.acquire(ctx, q, done)
+		var event func(context.Context) error
+		if q.Event != nil {
+			present = orElse(q.Event.Voltage, supply)
+			event = func(ctx context.Context) error { return r.power(ctx, present, 0) }
+		}
+		signals, err := r.acquire(ctx, q, event, done)
 		if err != nil {
 			return nil, err
 		}
-		c.Signals = append(c.Signals, map[string]measure.Signal{q.Role: {Samples: samples, Rate: float64(r.Setup.Rate)}})
+		c.Signals = append(c.Signals, signals)
 	}
 	return c, nil
+}
+
+func orElse(v *quantity.Voltage, other quantity.Voltage) quantity.Voltage {
+	if v != nil {
+		return *v
+	}
+	return other
 }
 
 // calibrate writes the station's calibrations into a capture's conditions.
@@ -201,19 +226,26 @@ func (r *Runner) calibrate(c *measure.Capture, schedule measure.Schedule) {
 	c.Inputs, c.FullScale = map[string]int{}, map[string]quantity.Voltage{}
 	c.Gain, c.Uncertainty = map[string]quantity.Ratio{}, map[string]tolerance.Tolerance{}
 	for _, q := range schedule.Acquisitions {
-		in := r.Setup.Inputs[q.Role]
-		c.Inputs[q.Role], c.FullScale[q.Role] = in.Channel, in.FullScale
-		c.Uncertainty["full_scale"] = in.FullScaleU
-		if len(in.Response.Points) > 0 {
-			if c.Response == nil {
-				c.Response = map[string]curve.Gain{}
+		for i, role := range q.Roles {
+			in := r.Setup.Inputs[role]
+			c.Inputs[role], c.FullScale[role] = in.Channel, in.FullScale
+			own := ""
+			if i > 0 { // the keys without a role are those of the first
+				own = "_" + role
 			}
-			c.Response[q.Role] = in.Response
-		}
-		if q.Role == measure.IF {
-			c.Gain[q.Role] = in.Gain
+			c.Uncertainty["full_scale"+own] = in.FullScaleU
+			if len(in.Response.Points) > 0 {
+				if c.Response == nil {
+					c.Response = map[string]curve.Gain{}
+				}
+				c.Response[role] = in.Response
+			}
+			if role == measure.Sense {
+				continue
+			}
+			c.Gain[role] = in.Gain
 			if in.GainU != nil {
-				c.Uncertainty["gain"] = *in.GainU
+				c.Uncertainty["gain"+own] = *in.GainU
 			}
 		}
 		if q.Chop && r.Setup.Shunt != nil {
@@ -240,8 +272,10 @@ func (r *Runner) calibrateShunt(c *measure.Capture) {
 func (r *Runner) calibrateTarget(c *measure.Capture) {
 	t := r.Setup.Target
 	c.Uncertainty["displacement"], c.Uncertainty["standoff"] = t.DisplacementU(c.Target.Tone), t.StandoffU
-	if t.Shape != nil {
-		c.Uncertainty["shape"] = *t.Shape
+	for key, u := range map[string]*tolerance.Tolerance{"shape": t.Shape, "stage": t.Stage, "position": t.Stops} {
+		if u != nil {
+			c.Uncertainty[key] = *u
+		}
 	}
 	own := func(tone *measure.Tone) {
 		if _, u := t.Curve.At(tone.Frequency); u > 0 {
@@ -272,13 +306,20 @@ func (r *Runner) reported(ctx context.Context, c *measure.Capture) error {
 	return err
 }
 
-// acquire brings the target into motion, records, and stills it again.
-func (r *Runner) acquire(ctx context.Context, q measure.Acquisition, progress func(float64)) (samples []float64, err error) {
-	in, ok := r.Setup.Inputs[q.Role]
-	if !ok {
-		return nil, &fixtures.Fault{Where: "station file", What: fmt.Sprintf("no input is named %q", q.Role), Action: "add it under inputs"}
+// acquire brings the target into motion, records, and stills it again. event is what happens
+// in the middle, nil for nothing.
+func (r *Runner) acquire(ctx context.Context, q measure.Acquisition, event func(context.Context) error, progress func(float64)) (signals map[string]measure.Signal, err error) {
+	job := fixtures.SoundJob{Frames: q.Frames, Lead: int(math.Ceil(float64(q.Settle) * float64(r.Setup.Rate))), Progress: progress}
+	for _, role := range q.Roles {
+		in, ok := r.Setup.Inputs[role]
+		if !ok {
+			return nil, &fixtures.Fault{Where: "station file", What: fmt.Sprintf("no input is named %q", role), Action: "add it under inputs"}
+		}
+		job.Inputs = append(job.Inputs, in.Channel)
 	}
-	job := fixtures.SoundJob{Inputs: []int{in.Channel}, Frames: q.Frames, Lead: int(math.Ceil(float64(q.Settle) * float64(r.Setup.Rate))), Progress: progress}
+	if event != nil {
+		job.At, job.Do = q.Event.At, event
+	}
 	moving := len(q.Tones) > 0 || q.Sweep != nil
 	if r.Bench.Target != nil {
 		if moving {
@@ -310,11 +351,15 @@ func (r *Runner) acquire(ctx context.Context, q measure.Acquisition, progress fu
 	if err != nil {
 		return nil, err
 	}
-	samples = rec.Samples[in.Channel]
-	if len(samples) != q.Frames {
-		return nil, &fixtures.Disturbance{Where: "sound", What: fmt.Sprintf("%d frames were recorded instead of %d", len(samples), q.Frames)}
+	signals = map[string]measure.Signal{}
+	for i, role := range q.Roles {
+		samples := rec.Samples[job.Inputs[i]]
+		if len(samples) != q.Frames {
+			return nil, &fixtures.Disturbance{Where: "sound", What: fmt.Sprintf("%d frames were recorded instead of %d", len(samples), q.Frames)}
+		}
+		signals[role] = measure.Signal{Samples: samples, Rate: float64(r.Setup.Rate)}
 	}
-	return samples, nil
+	return signals, nil
 }
 
 // still mutes the shaker and brings the stage back, even if the caller has given up.

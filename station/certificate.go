@@ -121,7 +121,9 @@ func noise(series [][2]float64, step string, a *record.Attempt) *chart.Noise {
 func label(name string) string {
 	step, part, _ := strings.Cut(name, ".")
 	known := map[string]string{"band": "noise in the band", "mains": "mains hum", "corner": "noise corner", "echo": "echo", "phase": "mixer phase φ0",
-		"curve": "response", "flatness": "flatness", "lower_edge": "lower edge", "upper_edge": "upper edge", "displacement": "displacement"}
+		"curve": "response", "flatness": "flatness", "lower_edge": "lower edge", "upper_edge": "upper edge", "displacement": "displacement",
+		"current": "current", "noise": "noise", "wavelength": "wavelength", "residual": "residual of the fit",
+		"second": "second harmonic", "third": "third harmonic"}
 	text := strings.ReplaceAll(step, "_", " ")
 	if inner, ok := strings.CutPrefix(part, "density("); ok {
 		text = "noise density at " + strings.TrimSuffix(inner, ")")

@@ -59,7 +59,9 @@ func (r *Runner) takeFloor(ctx context.Context, a *record.Attempt, s plan.Step, 
 		return err
 	}
 	only := schedule
-	only.Acquisitions = schedule.Acquisitions[:1]
+	only.Acquisitions = append([]measure.Acquisition(nil), schedule.Acquisitions[:1]...)
+	only.Acquisitions[0].Supply = nil // off
+	only.Conditions.Parts = nil
 	delete(r.floors, s.ID)
 	var c *measure.Capture
 	good := false

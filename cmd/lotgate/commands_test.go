@@ -55,7 +55,7 @@ func TestExitStatuses(t *testing.T) {
 		{"plan missing", []string{"plan", "check", file("none.yaml")}, statusVoid, "lotgate init"},
 		{"replay without limits", []string{"replay", captures + "/good"}, statusMisuse, "needs --limits"},
 		{"replay pass", []string{"replay", "--limits", captures + "/limits.yaml", captures + "/good"}, statusPass, "● pass"},
-		{"replay fail", []string{"replay", "--limits", captures + "/limits.yaml", captures + "/deaf"}, statusFail, "echo 897.3 µV, needs at least 2 mV"},
+		{"replay fail", []string{"replay", "--limits", captures + "/limits.yaml", captures + "/deaf"}, statusFail, "echo 897 µV, needs at least 2 mV"},
 		{"replay marginal", []string{"replay", "--limits", captures + "/limits.yaml", captures + "/marginal-echo"}, statusFail, "neither pass nor fail is proven"},
 		{"replay void", []string{"replay", "--limits", captures + "/limits.yaml", captures + "/overload"}, statusVoid, "the if input was overloaded"},
 		{"replay of no folder", []string{"replay", "--limits", captures + "/limits.yaml", dir}, statusVoid, "is no capture folder"},

@@ -41,6 +41,7 @@ type fixedUnit struct {
 
 var fixed = map[string]fixedUnit{
 	"%": {One, 0.01}, "": {One, 1}, "ppm": {One, 1e-6},
+	"1/V": {PerVoltUnit, 1}, "%/V": {PerVoltUnit, 0.01},
 	"dB": {DecibelUnit, 1}, "°C": {Celsius, 1}, "degC": {Celsius, 1},
 	"rad": {RadianUnit, 1}, "°": {RadianUnit, math.Pi / 180}, "deg": {RadianUnit, math.Pi / 180},
 	"min": {Second, 60}, "h": {Second, 3600}, "d": {Second, 86400},

@@ -33,6 +33,7 @@ var (
 	RadianUnit      = Unit{"rad", "angle", "0.5 rad", false}
 	MetrePerVolt    = Unit{"m/V", "displacement per volt", "0.5 mm/V", true}
 	MetrePerSecond  = Unit{"m/s", "speed", "1.4 m/s", true}
+	PerVoltUnit     = Unit{"1/V", "relative change per volt", "6 %/V", false}
 	MetrePerSecond2 = Unit{"m/s²", "acceleration", "9.81 m/s²", true}
 )
 
@@ -50,6 +51,7 @@ type (
 	Angle               float64 // rad
 	DisplacementPerVolt float64 // m/V
 	Speed               float64 // m/s
+	PerVolt             float64 // 1/V, relative change per volt; 0.06 is written 6 %/V
 	Decibel             float64 // dB, a ratio's level; never added to a linear value
 )
 
@@ -67,6 +69,7 @@ var unitOfType = map[reflect.Type]Unit{
 	reflect.TypeFor[DisplacementPerVolt](): MetrePerVolt,
 	reflect.TypeFor[Speed]():               MetrePerSecond,
 	reflect.TypeFor[Decibel]():             DecibelUnit,
+	reflect.TypeFor[PerVolt]():             PerVoltUnit,
 }
 
 // UnitOfType gives the unit a Go type is held in, and whether it is a quantity.
@@ -87,7 +90,7 @@ func UnitOf[T ~float64]() Unit {
 // UnitBySymbol finds a unit by its SI symbol, as readings carry it.
 func UnitBySymbol(symbol string) (Unit, bool) {
 	for _, u := range []Unit{Volt, Ampere, Hertz, Second, Metre, Ohm, VoltPerRootHz, DecibelUnit,
-		One, Celsius, RadianUnit, MetrePerVolt, MetrePerSecond, MetrePerSecond2} {
+		One, Celsius, RadianUnit, MetrePerVolt, MetrePerSecond, MetrePerSecond2, PerVoltUnit} {
 		if u.Symbol == symbol {
 			return u, true
 		}
@@ -107,6 +110,7 @@ func (v Temperature) String() string         { return Print(float64(v), Celsius)
 func (v Angle) String() string               { return Print(float64(v), RadianUnit) }
 func (v DisplacementPerVolt) String() string { return Print(float64(v), MetrePerVolt) }
 func (v Speed) String() string               { return Print(float64(v), MetrePerSecond) }
+func (v PerVolt) String() string             { return Print(float64(v), PerVoltUnit) }
 func (v Decibel) String() string             { return Print(float64(v), DecibelUnit) }
 
 // Percent prints a ratio in percent: 0.004 is "0.4 %".

@@ -329,7 +329,7 @@ func (b *bench) tolerable(ctx context.Context, p play, rough []signal.Scattered,
 	}
 	for try := 0; ; try++ {
 		q := p.scaled(level)
-		rec, err := b.s.shaken(ctx, q, []int{channel}, b.s.frames(2))
+		rec, err := b.s.shaken(ctx, q, []int{channel}, p.period)
 		var over *overloaded
 		if errors.As(err, &over) && try < 6 {
 			level *= 0.3
@@ -430,4 +430,7 @@ func (t Target) file(b *bench, course []signal.Scattered, size absolute) (*calib
 // short prints a length with three digits.
 func short(m float64) string { return quantity.PrintTo(m, m/50, quantity.Metre) }
 
-func (b *bench) lambda() float64 { return measure.SpeedOfLight / float64(b.t.Carrier) }
+// lambda is the wavelength in air of usual refractive index, as the carrier measurement takes it.
+func (b *bench) lambda() float64 {
+	return measure.SpeedOfLight / float64(b.t.Carrier) / measure.UsualAir
+}

@@ -52,7 +52,7 @@ func TestTargetRecoversTheTruth(t *testing.T) {
 		settings := draw(seed)
 		s, b := targetSession(t, settings)
 		flat := settings.Workshop.Flatness
-		f, err := Target{By: "accelerometer", Accelerometer: "sense", Flatness: flat, Carrier: settings.Carrier, CarrierU: 1e-6}.Run(t.Context(), s)
+		f, err := Target{By: "accelerometer", Accelerometer: "sense", Flatness: flat, Carrier: settings.Carrier, CarrierU: 4e-4}.Run(t.Context(), s)
 		if err != nil {
 			t.Fatal(seed, err)
 		}
@@ -63,6 +63,7 @@ func TestTargetRecoversTheTruth(t *testing.T) {
 			truth := shakerAt(hz, perVolt, settings.Target)
 			// The limit: the noise under the faintest harmonic, and what the accelerometer is good for.
 			accelerometer := math.Hypot(float64(flat)*math.Sqrt(math.Abs(math.Log10(hz/19))), 0.5*float64(flat)*math.Sqrt(math.Log10(3)))
+			accelerometer = math.Hypot(accelerometer, 4e-4) // and the carrier's spread
 			limit := math.Hypot(accelerometer, thirdHarmonicLimit(b.Truth(), f.Values[calibration.PhaseIndex].Value.Value))
 			c.add(truth, calibration.Found(d, d*quantity.DisplacementPerVolt(u)), limit*truth)
 		}

@@ -12,6 +12,9 @@ const (
 	Sense = "sense" // the chopped voltage of the current shunt
 )
 
+// Roles are all channel roles, in the order in which recordings keep them.
+func Roles() []string { return []string{IF, Sense} }
+
 // Conditions is all that a measurement needs to know of how its samples were
 // taken; in a capture folder it makes each entry self-contained. The keys are those
 // of capture.yaml. Every uncertainty is the expanded one at k = 2.
@@ -23,7 +26,7 @@ type Conditions struct {
 	FullScale    map[string]quantity.Voltage    `key:"full_scale" range:">0" doc:"volts peak at digital full scale, per input"`
 	Gain         map[string]quantity.Ratio      `key:"gain" range:">0" doc:"voltage gain between module and input"`
 	Response     map[string]curve.Gain          `key:"response" doc:"gain over frequency between module and samples, over what full_scale and gain state, per input; absent: even"`
-	Uncertainty  map[string]tolerance.Tolerance `key:"uncertainty" doc:"expanded uncertainty (k = 2) of full_scale, gain, shunt, displacement, standoff, phase"`
+	Uncertainty  map[string]tolerance.Tolerance `key:"uncertainty" doc:"expanded uncertainty (k = 2) of full_scale, gain, shunt, displacement, standoff, phase, position (where the stage stops), stage (of a length it moves)"`
 	Shunt        *Shunt                         `key:"shunt" doc:"the current shunt"`
 	Supply       SupplyState                    `key:"supply" doc:"off, or the supply voltage"`
 	StationFloor string                         `key:"station_floor" doc:"the step that holds the station's own floor"`
@@ -70,9 +73,10 @@ type Sweep struct {
 
 // Part is one acquisition of a step.
 type Part struct {
-	File     string          `key:"file" need:"yes" doc:"the WAV file"`
-	Position quantity.Length `key:"position" doc:"offset from the standoff, positive away from the module"`
-	Tone     *Tone           `key:"tone" doc:"the motion during this part, where each part has its own"`
+	File     string            `key:"file" need:"yes" doc:"the WAV file"`
+	Position quantity.Length   `key:"position" doc:"offset from the standoff, positive away from the module"`
+	Tone     *Tone             `key:"tone" doc:"the motion during this part, where each part has its own"`
+	Supply   *quantity.Voltage `key:"supply" range:">=0" doc:"supply voltage during this part, where each part has its own"`
 }
 
 // Signal is one recorded channel: fractions of digital full scale.

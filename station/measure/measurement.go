@@ -79,7 +79,7 @@ type Schedule struct {
 // Acquisition is one recording: what is done and what is recorded.
 type Acquisition struct {
 	What     string          // for the operator: "noise floor", "position 2 of 3"
-	Role     string          // channel recorded: IF or Sense
+	Roles    []string        // channels recorded at once: IF, Sense
 	Frames   int             // frames to record
 	Position quantity.Length // target's place
 	Tones    []Tone          // target's motion; nil: still
@@ -87,6 +87,18 @@ type Acquisition struct {
 	Sweep    *Sweep
 	Chop     bool          // chopper running
 	Settle   quantity.Time // time between the motion's start and recording
+	// Supply is the supply voltage during this acquisition, 0 V for off; nil: the step's.
+	// The step's is set again after the last acquisition.
+	Supply *quantity.Voltage
+	// Event is something that happens while this acquisition is recorded.
+	Event *SupplyEvent
+}
+
+// SupplyEvent is a change of the supply in the middle of a recording. It happens some time
+// after At: how long the device takes to be told is not known.
+type SupplyEvent struct {
+	At      int               // frames recorded when the supply is told
+	Voltage *quantity.Voltage // the new voltage; nil: the step's
 }
 
 // Duration is how long the acquisition records and settles.

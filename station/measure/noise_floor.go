@@ -78,7 +78,7 @@ func (m *NoiseFloor) Prepare(b Bench) (Schedule, error) {
 		age = *m.FloorAge
 	}
 	frames := int(math.Round(float64(m.Acquire) * float64(b.SampleRate)))
-	return Schedule{FloorAge: &age, Acquisitions: []Acquisition{{What: "noise floor", Role: IF, Frames: frames, Settle: 0.2}}}, nil
+	return Schedule{FloorAge: &age, Acquisitions: []Acquisition{{What: "noise floor", Roles: []string{IF}, Frames: frames, Settle: 0.2}}}, nil
 }
 
 // noiseSpectrum is a capture's power density referred to the module's output, V²/Hz.
@@ -143,11 +143,11 @@ func (m *NoiseFloor) spectrum(c *Capture) (*noiseSpectrum, *Void, error) {
 	if v := check(s, "if"); v != nil {
 		return nil, v, nil
 	}
-	top := high
+	top := 1.2 * high
 	for _, f := range m.Densities {
-		top = math.Max(top, float64(f))
+		top = math.Max(top, 1.03*math.Sqrt2*float64(f)) // a density looks half an octave up
 	}
-	d := signal.Decimate(s.Samples, s.Rate, math.Min(1.2*top, 0.45*s.Rate))
+	d := signal.Decimate(s.Samples, s.Rate, math.Min(top, 0.45*s.Rate))
 	if v := steady(d.Samples, d.Rate, low, high, 5/low); v != nil {
 		return nil, v, nil
 	}

@@ -97,7 +97,7 @@ func (m *Response) Prepare(b Bench) (Schedule, error) {
 	case "sweep":
 		return m.sweepSchedule(c, b, tones, frames)
 	}
-	return Schedule{Conditions: c, Acquisitions: []Acquisition{{What: "response", Role: IF, Frames: frames, Period: frames, Tones: tones, Settle: 0.5}}}, nil
+	return Schedule{Conditions: c, Acquisitions: []Acquisition{{What: "response", Roles: []string{IF}, Frames: frames, Period: frames, Tones: tones, Settle: 0.5}}}, nil
 }
 
 // scale finds the factor to displacements that keeps the peak excursion and the
@@ -133,7 +133,7 @@ func (m *Response) steppedSchedule(c Conditions, b Bench, tones []Tone, frames i
 		x = math.Min(x, 0.9*float64(b.LargestDrive)*float64(b.PerVolt(t.Frequency)))
 		t.Displacement, t.Phase = quantity.Length(x), 0
 		tones[i] = t
-		s.Acquisitions = append(s.Acquisitions, Acquisition{What: fmt.Sprintf("response, tone %d of %d", i+1, len(tones)), Role: IF,
+		s.Acquisitions = append(s.Acquisitions, Acquisition{What: fmt.Sprintf("response, tone %d of %d", i+1, len(tones)), Roles: []string{IF},
 			Frames: frames, Period: frames, Tones: []Tone{t}, Settle: 0.3})
 		c.Parts = append(c.Parts, Part{Tone: &t})
 	}

@@ -34,7 +34,7 @@ func (m *Response) sweepSchedule(c Conditions, b Bench, tones []Tone, frames int
 		return Schedule{}, fmt.Errorf("the sweep's end %v is too near half the sample rate", sweep.To)
 	}
 	c.Tones, c.Sweep = tones, &sweep
-	return Schedule{Conditions: c, Acquisitions: []Acquisition{{What: "response, sweep", Role: IF, Frames: frames, Tones: tones, Sweep: &sweep, Settle: 0.3}}}, nil
+	return Schedule{Conditions: c, Acquisitions: []Acquisition{{What: "response, sweep", Roles: []string{IF}, Frames: frames, Tones: tones, Sweep: &sweep, Settle: 0.3}}}, nil
 }
 
 // SweepSamples is a logarithmic sweep of amplitude one after its lead: sin of the phase

@@ -92,6 +92,19 @@ func phaseIndex(displacement float64, carrier quantity.Frequency) float64 {
 // Prepare moves the stage through the positions and the shaker at the tone, rounded to a
 // line of the record.
 func (m *Sensitivity) Prepare(b Bench) (Schedule, error) {
+	positions := []quantity.Length{0}
+	eighth := b.Module.Wavelength() / 8
+	if m.Method == "positions" {
+		positions = []quantity.Length{0, eighth}
+		if m.Positions == 3 {
+			positions = []quantity.Length{-eighth, 0, eighth}
+		}
+	}
+	return m.at(b, positions)
+}
+
+// at prepares the tone at some positions.
+func (m *Sensitivity) at(b Bench, positions []quantity.Length) (Schedule, error) {
 	if m.Displacement > b.Largest {
 		return Schedule{}, fmt.Errorf("a displacement of %v is more than the %v this target may make", m.Displacement, b.Largest)
 	}
@@ -101,21 +114,13 @@ func (m *Sensitivity) Prepare(b Bench) (Schedule, error) {
 	if drive := float64(m.Displacement) / float64(b.PerVolt(tone.Frequency)); drive > float64(b.LargestDrive) {
 		return Schedule{}, fmt.Errorf("%v at %v needs a drive of %v, more than the output's %v: write a smaller displacement or a tone nearer the shaker's resonance", m.Displacement, tone.Frequency, quantity.Voltage(drive), b.LargestDrive)
 	}
-	positions := []quantity.Length{0}
-	eighth := b.Module.Wavelength() / 8
-	if m.Method == "positions" {
-		positions = []quantity.Length{0, eighth}
-		if m.Positions == 3 {
-			positions = []quantity.Length{-eighth, 0, eighth}
-		}
-	}
 	s := Schedule{Conditions: Conditions{Target: &Motion{Tone: tone.Frequency, Displacement: m.Displacement, Standoff: b.Standoff, Phase: m.Phase}}}
 	for i, p := range positions {
 		if math.Abs(float64(p)) > float64(b.Travel) {
 			return Schedule{}, fmt.Errorf("a position of %v is beyond the stage's travel of %v: use method: harmonics or single", p, b.Travel)
 		}
 		s.Conditions.Parts = append(s.Conditions.Parts, Part{Position: p})
-		s.Acquisitions = append(s.Acquisitions, Acquisition{What: fmt.Sprintf("echo, position %d of %d", i+1, len(positions)), Role: IF,
+		s.Acquisitions = append(s.Acquisitions, Acquisition{What: fmt.Sprintf("echo, position %d of %d", i+1, len(positions)), Roles: []string{IF},
 			Frames: frames, Period: frames, Position: p, Tones: []Tone{tone}, Settle: 0.3})
 	}
 	return s, nil
@@ -253,13 +258,14 @@ func (m *Sensitivity) fromPositions(c *Capture, fits []toneFit) (Result, error) 
 	j1 := math.J1(beta)
 	signed, aligned := alongOneAxis(fits)
 	type row struct{ cos, sin, value, sigma, dof, position float64 }
-	rows := make([]row, len(fits))
+	rows, psis := make([]row, len(fits)), make([]float64, len(fits))
 	var cc, cs, ss float64
 	for k, f := range fits {
 		if standoff+f.position <= 0 {
 			return Result{}, fmt.Errorf("step %s: position %v lies behind the module at a standoff of %v", c.Step, quantity.Length(f.position), c.Target.Standoff)
 		}
 		psi := 4 * math.Pi * f.position / lambda
+		psis[k] = psi
 		r := math.Pow((standoff+f.position)/standoff, 2)
 		h := f.harmonics[0]
 		rows[k] = row{math.Cos(psi), -math.Sin(psi), signed[k] * r / (2 * j1), h.sigma * r / (2 * j1), h.dof, f.position}
@@ -308,14 +314,21 @@ func (m *Sensitivity) fromPositions(c *Capture, fits []toneFit) (Result, error) 
 	if t, ok := c.Uncertainty["standoff"]; ok {
 		components = append(components, Component{"standoff (calibration)", math.Abs(onStandoff) * t.Standard(standoff), 0})
 	}
+	sigma, source := c.position()
+	along, across := astray(p, q, psis, weightP, weightQ, sigma, lambda)
+	components = append(components, Component{source, along, 0})
 	e := Reading{Name: c.Step + ".echo", Unit: "V", Value: echo, Budget: Combine(components...)}
 	if power < 9*(up+uq) {
 		e.Notes = append(e.Notes, "the tone does not stand out of the noise")
 	}
-	return Result{Readings: []Reading{e, m.phase(c, p, q, up, uq, dof, aligned, power)}}, nil
+	stops := Component{source, 0, 0}
+	if power > 0 {
+		stops.U = across / math.Sqrt(power)
+	}
+	return Result{Readings: []Reading{e, m.phase(c, p, q, up, uq, dof, aligned, power, stops)}}, nil
 }
 
-func (m *Sensitivity) phase(c *Capture, p, q, up, uq, dof float64, aligned bool, power float64) Reading {
+func (m *Sensitivity) phase(c *Capture, p, q, up, uq, dof float64, aligned bool, power float64, further ...Component) Reading {
 	r := Reading{Name: c.Step + ".phase", Unit: "rad"}
 	if power < 9*(up+uq) {
 		r.Missing = "the tone does not stand out of the noise, so that φ0 is not known"
@@ -330,7 +343,7 @@ func (m *Sensitivity) phase(c *Capture, p, q, up, uq, dof float64, aligned bool,
 		r.Notes = append(r.Notes, "folded into 0…π/2: the phase between drive and recording is not known")
 	}
 	sigma := math.Sqrt(q*q*up+p*p*uq) / power
-	r.Budget = Combine(Component{"scatter of the fitted tones", sigma, dof})
+	r.Budget = Combine(append([]Component{{"scatter of the fitted tones", sigma, dof}}, further...)...)
 	return r
 }
 

@@ -58,7 +58,7 @@ func (m *SupplyCurrent) Prepare(b Bench) (Schedule, error) {
 		return Schedule{}, fmt.Errorf("this station has no chopped shunt: give the station file a shunt, or write using: reported")
 	}
 	frames := int(math.Round(float64(m.Acquire) * float64(b.SampleRate)))
-	return Schedule{Acquisitions: []Acquisition{{What: "supply current", Role: Sense, Frames: frames, Chop: true, Settle: 0.1}}}, nil
+	return Schedule{Acquisitions: []Acquisition{{What: "supply current", Roles: []string{Sense}, Frames: frames, Chop: true, Settle: 0.1}}}, nil
 }
 
 // Evaluate fits the chopped wave.
@@ -66,23 +66,54 @@ func (m *SupplyCurrent) Evaluate(c *Capture) (Result, error) {
 	if c.Reported != nil {
 		return m.evaluateReported(c), nil
 	}
-	s, err := c.channel(0, Sense)
+	f, void, err := fitChopped(c, 0)
 	if err != nil {
 		return Result{}, err
 	}
+	if void != nil {
+		return voidAll(c.Step, m.Readings(), void), nil
+	}
+	value, scatter := c.current(f)
+	components := append([]Component{{"scatter of the fitted fundamental", scatter, f.dof}},
+		c.levelComponents(Sense, value, float64(c.Shunt.Chop))...)
+	components = append(components, Component{"shunt and its amplifier (calibration)", value * c.Uncertainty["shunt"].Standard(float64(c.Shunt.Resistance)), 0})
+	if t, ok := c.Uncertainty["offset"]; ok {
+		components = append(components, Component{"offset of the sense amplifier (calibration)", t.Absolute / 2, 0})
+	}
+	return Result{Readings: []Reading{{Name: c.Step, Unit: "A", Value: value, Budget: Combine(components...)}}}, nil
+}
+
+// current turns a chopped fundamental into the supply current and its scatter, A.
+func (c *Capture) current(f chopFit) (value, scatter float64) {
+	perVolt := math.Pi / 2 / (float64(c.Shunt.Resistance) * float64(c.Shunt.Gain))
+	return perVolt*f.peak - float64(c.Shunt.Offset), perVolt * f.sigma
+}
+
+// chopFit is the fundamental of the chopped wave at the sense amplifier's output.
+type chopFit struct {
+	peak, sigma float64 // V
+	dof         float64
+}
+
+// fitChopped fits the chopped wave of one recording and checks that it is a square wave.
+func fitChopped(c *Capture, part int) (chopFit, *Void, error) {
+	s, err := c.channel(part, Sense)
+	if err != nil {
+		return chopFit{}, nil, err
+	}
 	if c.Shunt == nil {
-		return Result{}, fmt.Errorf("step %s: the shunt is not given: add shunt: {resistance: …, gain: …, chop: …}", c.Step)
+		return chopFit{}, nil, fmt.Errorf("step %s: the shunt is not given: add shunt: {resistance: …, gain: …, chop: …}", c.Step)
 	}
 	volts, err := c.volts(Sense)
 	if err != nil {
-		return Result{}, err
+		return chopFit{}, nil, err
 	}
 	if v := check(s, "sense"); v != nil {
-		return voidAll(c.Step, m.Readings(), v), nil
+		return chopFit{}, v, nil
 	}
 	chop := float64(c.Shunt.Chop)
 	if 3.2*chop > s.Rate/2 {
-		return Result{}, fmt.Errorf("step %s: a chopping frequency of %v cannot be checked at a sample rate of %.0f Hz: lower it below a sixth of the rate", c.Step, c.Shunt.Chop, s.Rate)
+		return chopFit{}, nil, fmt.Errorf("step %s: a chopping frequency of %v cannot be checked at a sample rate of %.0f Hz: lower it below a sixth of the rate", c.Step, c.Shunt.Chop, s.Rate)
 	}
 	d := signal.Decimate(s.Samples, s.Rate, math.Min(5.4*chop, 0.4*s.Rate))
 	fundamental := signal.StrongestNear(d.Samples, d.Rate, chop, 0.03)
@@ -92,7 +123,7 @@ func (m *SupplyCurrent) Evaluate(c *Capture) (Result, error) {
 	}
 	fit, err := signal.FitDriven(d.Samples, d.Rate, multiples, nil)
 	if err != nil {
-		return Result{}, fmt.Errorf("step %s: %w: record at least %.2f s", c.Step, err, 10/chop)
+		return chopFit{}, nil, fmt.Errorf("step %s: %w: record at least %.2f s", c.Step, err, 10/chop)
 	}
 	gain1, _ := c.gainAt(Sense, fit.FrequencyHz[0])
 	gain3, _ := c.gainAt(Sense, fit.FrequencyHz[2])
@@ -101,20 +132,12 @@ func (m *SupplyCurrent) Evaluate(c *Capture) (Result, error) {
 	noise := signal.NoiseAround(spectrum, signal.QuietLines(spectrum, fit.FrequencyHz, 0), fit.FrequencyHz[0], 12)
 	sigma := math.Sqrt(noise.Value*d.Rate/float64(len(d.Samples))) / gain1
 	if v := chopperVoid(a1, a3, sigma, chop, fit.FrequencyHz[0]); v != nil {
-		return voidAll(c.Step, m.Readings(), v), nil
+		return chopFit{}, v, nil
 	}
 	if v := steady(fit.Residual, d.Rate, chop/4, math.Min(4.5*chop, 0.36*s.Rate), 24/chop); v != nil {
-		return voidAll(c.Step, m.Readings(), v), nil
+		return chopFit{}, v, nil
 	}
-	perVolt := math.Pi / 2 / (float64(c.Shunt.Resistance) * float64(c.Shunt.Gain))
-	value := perVolt*a1*volts - float64(c.Shunt.Offset)
-	components := append([]Component{{"scatter of the fitted fundamental", perVolt * sigma * volts, noise.Dof}},
-		c.levelComponents(Sense, value, fit.FrequencyHz[0])...)
-	components = append(components, Component{"shunt and its amplifier (calibration)", value * c.Uncertainty["shunt"].Standard(float64(c.Shunt.Resistance)), 0})
-	if t, ok := c.Uncertainty["offset"]; ok {
-		components = append(components, Component{"offset of the sense amplifier (calibration)", t.Absolute / 2, 0})
-	}
-	return Result{Readings: []Reading{{Name: c.Step, Unit: "A", Value: value, Budget: Combine(components...)}}}, nil
+	return chopFit{a1 * volts, sigma * volts, noise.Dof}, nil, nil
 }
 
 func (m *SupplyCurrent) evaluateReported(c *Capture) Result {

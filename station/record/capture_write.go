@@ -105,7 +105,7 @@ func writeSamples(dir string, c *measure.Capture) (entry, error) {
 		}
 		format := wav.Format{Bits: 32, Float: true}
 		var channels [][]float64
-		for _, role := range []string{measure.IF, measure.Sense} {
+		for _, role := range measure.Roles() {
 			if s, ok := signals[role]; ok {
 				channels = append(channels, s.Samples)
 				format.Rate = int(s.Rate)
