@@ -6,6 +6,8 @@ import (
 	"math/cmplx"
 	"slices"
 
+	"gonum.org/v1/gonum/mat"
+
 	"lotgate/limits/quantity"
 )
 
@@ -175,71 +177,141 @@ func slopeOf(m int, beta float64) float64 {
 	return log(m+2) - log(m)
 }
 
+// besselPlaces is at how many places of the stage, over λ/2, the harmonics are compared.
+const besselPlaces = 12
+
 // bessel finds the displacement absolutely at a low frequency, the way ISO 16063-11 and -41 use
 // an interferometer: with x(t) = X·cos ωt the IF holds the harmonics 2·V0·J_n(β)·|sin φ0| (odd)
 // and |cos φ0| (even), so that
 //
-//	J3(β)/J1(β) = (H3/C3)/(H1/C1),  J4(β)/J2(β) = (H4/C4)/(H2/C2)
+//	J3(β)/J1(β) = (H3/C3)/(H1/C1)
 //
 // with C_n what module and input make of a small motion at the n-th harmonic: measured with
 // small tones beside them against the accelerometer, or known of the reference module. β gives
-// X = β·λ/4π. Odd harmonics are taken at the place of the stage where |sin φ0| is large, even
-// ones λ/8 from it; each pair counts by its certainty, so that every φ0 is covered. The plate's
-// own third harmonic, as the accelerometer sees it, is taken off.
+// X = β·λ/4π.
+//
+// The stage goes through places over λ/2, so that every φ0 is covered, and so that what is no phase
+// modulation is told from it by how it goes with φ = φ0 − 4πp/λ: the third harmonic is
+// g·sin φ (phase modulation) + g·cos φ (the shaker's second harmonic) + g³·sin³ φ (cube law of the
+// IF) + g²·sin 2φ (its square law), g the range law; the first likewise. The plate's own
+// third harmonic, as the accelerometer sees it, is taken off.
 func (b *bench) bessel(ctx context.Context) (absolute, error) {
 	out := absolute{}
 	p := b.s.tone(besselSeconds, float64(b.t.Absolute), b.level)
 	out.hz = p.hz(b.s.rate())[0]
-	b.s.tell("comparing harmonics at %v, %d times %.0f s at two places", quantity.Frequency(out.hz), b.s.repeats(), besselSeconds)
 	small, err := b.smallMotion(ctx, out.hz)
 	if err != nil {
 		return out, err
 	}
-	odd, err := b.harmonics(ctx, p, b.s.repeats())
-	if err != nil {
-		return out, err
-	}
-	if err := b.s.Bench.Target.MoveTo(ctx, quantity.Length(b.cosine)); err != nil {
-		return out, err
-	}
-	even, err := b.harmonics(ctx, p, b.s.repeats())
-	if err != nil {
-		return out, err
+	b.s.tell("comparing harmonics at %v, %.0f s at each of %d places", quantity.Frequency(out.hz), besselSeconds, besselPlaces)
+	var list []harmonicsAt
+	var first []echoAt
+	for k := range besselPlaces {
+		at := b.lambda() / 2 * (float64(k)/besselPlaces - 0.5)
+		if err := b.s.Bench.Target.MoveTo(ctx, quantity.Length(at)); err != nil {
+			return out, err
+		}
+		h, err := b.harmonics(ctx, p, 1)
+		if err != nil {
+			return out, err
+		}
+		list, first = append(list, h), append(first, echoAt{at, h.echo[1]})
 	}
 	if err := b.s.Bench.Target.MoveTo(ctx, quantity.Length(b.sine)); err != nil {
 		return out, err
 	}
-	var beta, weight, flat float64
-	for _, pair := range []struct {
-		m int
-		h harmonicsAt
-	}{{1, odd}, {2, even}} {
-		upper, lower := pair.h.echo[pair.m+2], pair.h.echo[pair.m]
-		if cmplx.Abs(upper.a) < 20*upper.sigma || cmplx.Abs(lower.a) < 20*lower.sigma {
-			continue
-		}
-		top := upper.a / small.gain[pair.m+2]
-		if pair.m == 1 && pair.h.plate[1].a != 0 {
-			top -= pair.h.plate[3].a * complex(math.J0(b.beta), 0)
-		}
-		ratio := cmplx.Abs(top) / cmplx.Abs(lower.a/small.gain[pair.m])
-		found, slope := 0.0, 0.0
-		found = betaOf(pair.m, ratio)
-		slope = slopeOf(pair.m, found)
-		noise := math.Sqrt(square(upper.sigma/cmplx.Abs(upper.a))+square(lower.sigma/cmplx.Abs(lower.a))+
-			square(small.relative[pair.m+2])+square(small.relative[pair.m])) / slope
-		w := 1 / (noise * noise)
-		beta, weight = beta+w*found, weight+w
-		flat += w * b.shapeU(float64(pair.m+2)*out.hz, float64(pair.m)*out.hz) / slope
+	f, err := b.overFringe(list, first)
+	if err != nil {
+		return out, err
 	}
-	if weight == 0 {
-		return out, wrong("move the standoff by λ/16, or let the shaker move further", "no pair of harmonics stands out enough to tell the displacement")
+	// Small motion was measured at one place; its share of the fringe there is taken out.
+	psi := 4 * math.Pi * b.sine / b.lambda()
+	place := complex(f.fall(b.sine)*math.Sin(f.phi-psi), 0)
+	third := f.third / (small.gain[3] / place)
+	if list[0].plate[1].a != 0 {
+		var own complex128
+		for _, h := range list {
+			own += h.plate[3].a / complex(float64(len(list)), 0)
+		}
+		third -= own * cmplx.Exp(complex(0, -3*f.axis)) * complex(math.J0(b.beta), 0)
 	}
-	out.beta, out.noise = beta/weight, 1/math.Sqrt(weight)
+	ratio := cmplx.Abs(third) / cmplx.Abs(f.first/(small.gain[1]/place))
+	if f.thirdU > 0.05*cmplx.Abs(f.third) {
+		return out, wrong("let the shaker move further, or use a module with a stronger echo", "the third harmonic of the IF does not stand out enough to tell the displacement")
+	}
+	out.beta = betaOf(1, ratio)
+	slope := slopeOf(1, out.beta)
+	out.noise = math.Sqrt(square(f.thirdU/cmplx.Abs(f.third))+square(f.firstU/cmplx.Abs(f.first))+square(small.relative[3])+square(small.relative[1])) / slope
+	out.shape, out.carrier = b.shapeU(3*out.hz, out.hz)/slope, float64(b.t.CarrierU)/2
 	volts := b.level * float64(b.s.Setup.Target.FullScale)
 	out.perVolt = out.beta * b.lambda() / (4 * math.Pi) / volts
-	out.shape, out.carrier = flat/weight, float64(b.t.CarrierU)/2
 	return out, nil
+}
+
+// overFringe is how first and third harmonic go over a fringe.
+type overFringe struct {
+	standoff       float64
+	phi, axis      float64 // φ0 of the stage's zero; phase of the first harmonic
+	first, third   complex128
+	firstU, thirdU float64 // standard uncertainty of each of their parts
+}
+
+// fall is the range law, (S/(S+p))².
+func (f overFringe) fall(p float64) float64 { return square(f.standoff / (f.standoff + p)) }
+
+func (b *bench) overFringe(list []harmonicsAt, first []echoAt) (overFringe, error) {
+	f := overFringe{standoff: float64(b.s.Setup.Target.Standoff)}
+	if f.standoff == 0 {
+		return f, wrong("run lotgate calibrate standoff first", "the standoff is not known, and with it how the echo falls with the distance")
+	}
+	values := signed(first)
+	q := []float64{0, 0, math.Log(b.lambda()), f.standoff, 2}
+	linear(first, values, q)
+	f.phi = math.Atan2(q[0], q[1])
+	var axis complex128
+	for i, e := range first {
+		axis += e.a * complex(values[i], 0)
+	}
+	f.axis = cmplx.Phase(axis)
+	columns := make([][]float64, len(list))
+	for i, e := range first {
+		g := f.fall(e.position)
+		sin, cos := math.Sincos(f.phi - 4*math.Pi*e.position/b.lambda())
+		columns[i] = []float64{g * sin, g * cos, g * g * g * sin * sin * sin, 2 * g * g * sin * cos}
+	}
+	var err error
+	if f.first, f.firstU, err = alongFringe(list, columns, 1, f.axis); err != nil {
+		return f, err
+	}
+	f.third, f.thirdU, err = alongFringe(list, columns, 3, f.axis)
+	return f, err
+}
+
+// alongFringe fits a harmonic, turned by its own multiple of the axis, by columns over the places,
+// and gives the first coefficient with its standard uncertainty.
+func alongFringe(list []harmonicsAt, columns [][]float64, n int, axis float64) (complex128, float64, error) {
+	m := len(columns[0])
+	normal, re, im := mat.NewSymDense(m, nil), mat.NewVecDense(m, nil), mat.NewVecDense(m, nil)
+	sigma := 0.0
+	for i, h := range list {
+		y := h.echo[n].a * cmplx.Exp(complex(0, -float64(n)*axis))
+		sigma += square(h.echo[n].sigma) / float64(len(list))
+		for a := range m {
+			re.SetVec(a, re.AtVec(a)+columns[i][a]*real(y))
+			im.SetVec(a, im.AtVec(a)+columns[i][a]*imag(y))
+			for c := a; c < m; c++ {
+				normal.SetSym(a, c, normal.At(a, c)+columns[i][a]*columns[i][c])
+			}
+		}
+	}
+	var inverse mat.Dense
+	if err := inverse.Inverse(normal); err != nil {
+		return 0, 0, wrong("let the stage travel λ/4 either way", "the places of the stage do not cover a fringe")
+	}
+	var x, y mat.VecDense
+	x.MulVec(&inverse, re)
+	y.MulVec(&inverse, im)
+	return complex(x.AtVec(0), y.AtVec(0)), math.Sqrt(sigma * inverse.At(0, 0)), nil
 }
 
 // smallMotion is what module and input make of a small displacement at the harmonics of the

@@ -117,24 +117,20 @@ type bench struct {
 	module attach.InputSetup // the IF input
 	plate  attach.InputSetup // the accelerometer's
 	sine   float64           // place of the stage at which |sin φ0| is large
-	cosine float64           // and small
 	// What the ramp found at the absolute frequency.
 	level   float64 // largest usable peak of the output, fraction of full scale
 	beta    float64 // phase index there, roughly
 	largest float64 // m, where the shaker's harmonics began to show; 0: they did not
 }
 
-// place looks at two places of the stage λ/8 apart and keeps that with the larger first
-// harmonic for the odd ones, the other for the even ones: so every φ0 is covered.
+// place looks at two places of the stage λ/8 apart and keeps that with the larger first harmonic.
 func (b *bench) place(ctx context.Context) error {
-	eighth := measure.SpeedOfLight / float64(b.t.Carrier) / 8
-	if eighth > float64(b.s.Setup.Target.Travel) {
-		return wrong("let the stage travel λ/8 at least", "the stage cannot move by λ/8 = %v", quantity.Length(eighth))
+	if quarter := b.lambda() / 4; quarter > float64(b.s.Setup.Target.Travel) {
+		return wrong("let the stage travel λ/4 either way at least", "the stage cannot move by λ/4 = %v", quantity.Length(quarter))
 	}
 	p := b.s.tone(1, float64(b.t.Absolute), 0.05)
-	var size [2]float64
-	var list []echoAt
-	for i, at := range []float64{0, eighth} {
+	loudest := 0.0
+	for _, at := range []float64{0, b.lambda() / 8} {
 		if err := b.s.Bench.Target.MoveTo(ctx, quantity.Length(at)); err != nil {
 			return err
 		}
@@ -146,16 +142,12 @@ func (b *bench) place(ctx context.Context) error {
 		if err != nil {
 			return err
 		}
-		size[i] = cmplx.Abs(fits[0].a)
-		list = append(list, echoAt{at, fits[0]})
+		if a := cmplx.Abs(fits[0].a); a > loudest && a > 20*fits[0].sigma {
+			loudest, b.sine = a, at
+		}
 	}
-	if math.Max(size[0]/list[0].sigma, size[1]/list[1].sigma) < 20 {
+	if loudest == 0 {
 		return wrong("check the shaker's amplifier and wires, that the plate faces the module, and that the module has power", "no echo of the moving target is heard: the target does not move")
-	}
-	if size[0] >= size[1] {
-		b.sine, b.cosine = 0, eighth
-	} else {
-		b.sine, b.cosine = eighth, 0
 	}
 	return b.s.Bench.Target.MoveTo(ctx, quantity.Length(b.sine))
 }

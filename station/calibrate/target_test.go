@@ -34,12 +34,14 @@ func targetSession(t testing.TB, settings virtual.Settings) (*Session, *virtual.
 }
 
 // thirdHarmonicLimit is twice the relative standard deviation of β that the module's noise under
-// the third harmonic of 19 Hz alone leaves over three records of four seconds, at the better of two
-// places λ/8 apart: J3/J1 is in proportion to β² (Abramowitz & Stegun 9.1.7), so half of it counts.
+// the third harmonic of 19 Hz alone leaves over twelve records of four seconds, spread over a
+// fringe: J3/J1 is in proportion to β² (Abramowitz & Stegun 9.1.7), so half of it counts. That four
+// columns are fitted where one is wanted (sin φ beside sin³ φ) makes the variance 10 times as large:
+// the mean squares of sin φ and sin³ φ are 1/2 and 5/16, of their product 3/8, so that
+// 1/(1/2 − (3/8)²/(5/16)) = 20 takes the place of 2.
 func thirdHarmonicLimit(m virtual.Truth, beta float64) float64 {
-	sine := math.Max(math.Abs(math.Sin(float64(m.Phase))), math.Abs(math.Cos(float64(m.Phase))))
-	third := 2 * float64(m.EchoAt(57)) * math.Jn(3, beta) * sine
-	return 2 * float64(m.Density(57)) / math.Sqrt(12) / third / 2
+	third := 2 * float64(m.EchoAt(57)) * math.Jn(3, beta)
+	return 2 * float64(m.Density(57)) / math.Sqrt(48) * math.Sqrt(20) / third / 2
 }
 
 func TestTargetRecoversTheTruth(t *testing.T) {

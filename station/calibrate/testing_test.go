@@ -67,7 +67,7 @@ func open(t testing.TB, settings virtual.Settings) (*Session, *virtual.Bench) {
 		"sense": {Channel: a.SenseInput, Gain: 1},
 	}}
 	s.Setup.Shunt = &attach.ShuntSetup{Gain: a.SenseGain, Chop: a.Chop}
-	s.Setup.Target = attach.TargetSetup{Channel: a.ShakerOutput, FullScale: a.OutputFullScale, Standoff: 0.22, Largest: a.Excursion, Travel: a.Travel}
+	s.Setup.Target = attach.TargetSetup{Channel: a.ShakerOutput, FullScale: a.OutputFullScale, Standoff: a.Standoff, Largest: a.Excursion, Travel: a.Travel}
 	return s, b
 }
 
