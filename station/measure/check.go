@@ -160,8 +160,9 @@ func (c *Capture) volts(role string) (float64, error) {
 // this value.
 func (c *Capture) levelComponents(role string, value float64) []Component {
 	value = math.Abs(value)
-	out := []Component{{"full scale of the " + role + " input (calibration)", value * c.Uncertainty["full_scale"].Standard(float64(c.FullScale[role])), 0}}
-	if t, ok := c.Uncertainty["gain"]; ok {
+	full, _ := c.uncertainty("full_scale", role)
+	out := []Component{{"full scale of the " + role + " input (calibration)", value * full.Standard(float64(c.FullScale[role])), 0}}
+	if t, ok := c.uncertainty("gain", role); ok {
 		out = append(out, Component{"gain between module and input (calibration)", value * t.Standard(float64(c.Gain[role])), 0})
 	}
 	return out
