@@ -32,7 +32,27 @@ func (r *Runner) bench() measure.Bench {
 // Rehearse checks that this station can do every step of its plan, and describes it.
 func (r *Runner) Rehearse() (plan.Description, error) {
 	b := r.bench()
-	return r.Plan.Describe(&b)
+	d, err := r.Plan.Describe(&b)
+	if err != nil {
+		return d, err
+	}
+	for _, s := range r.Plan.Steps {
+		if s.Measure == nil {
+			continue
+		}
+		schedule, err := s.Measure.Prepare(b)
+		if err != nil {
+			return d, err
+		}
+		for _, q := range schedule.Acquisitions {
+			for _, role := range q.Roles {
+				if _, ok := r.Setup.Inputs[role]; !ok {
+					return d, fmt.Errorf("%s:%d: %s: this station has no input %q: add it under inputs in the station file", r.Plan.Path(), s.Line, s.ID, role)
+				}
+			}
+		}
+	}
+	return d, nil
 }
 
 // power sets the supply, the lid being closed, and waits.

@@ -123,7 +123,8 @@ func label(name string) string {
 	known := map[string]string{"band": "noise in the band", "mains": "mains hum", "corner": "noise corner", "echo": "echo", "phase": "mixer phase φ0",
 		"curve": "response", "flatness": "flatness", "lower_edge": "lower edge", "upper_edge": "upper edge", "displacement": "displacement",
 		"current": "current", "noise": "noise", "wavelength": "wavelength", "residual": "residual of the fit",
-		"second": "second harmonic", "third": "third harmonic"}
+		"second": "second harmonic", "third": "third harmonic", "gain": "gain of Q to I",
+		"offset_i": "pick-up of I", "offset_q": "pick-up of Q", "correlation": "correlation of the noises"}
 	text := strings.ReplaceAll(step, "_", " ")
 	if inner, ok := strings.CutPrefix(part, "density("); ok {
 		text = "noise density at " + strings.TrimSuffix(inner, ")")

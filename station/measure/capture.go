@@ -8,12 +8,14 @@ import (
 
 // Channel roles a capture may hold.
 const (
-	IF    = "if"    // the module's IF output, after the preamplifier
-	Sense = "sense" // the chopped voltage of the current shunt
+	IF = "if" // the module's IF output, after the preamplifier
+	// Quadrature is the second IF output of a module that has two, after its preamplifier.
+	Quadrature = "quadrature"
+	Sense      = "sense" // the chopped voltage of the current shunt
 )
 
 // Roles are all channel roles, in the order in which recordings keep them.
-func Roles() []string { return []string{IF, Sense} }
+func Roles() []string { return []string{IF, Quadrature, Sense} }
 
 // Conditions is all that a measurement needs to know of how its samples were
 // taken; in a capture folder it makes each entry self-contained. The keys are those
@@ -26,7 +28,7 @@ type Conditions struct {
 	FullScale    map[string]quantity.Voltage    `key:"full_scale" range:">0" doc:"volts peak at digital full scale, per input"`
 	Gain         map[string]quantity.Ratio      `key:"gain" range:">0" doc:"voltage gain between module and input"`
 	Response     map[string]curve.Gain          `key:"response" doc:"gain over frequency between module and samples, over what full_scale and gain state, per input; absent: even"`
-	Uncertainty  map[string]tolerance.Tolerance `key:"uncertainty" doc:"expanded uncertainty (k = 2) of full_scale, gain, shunt, displacement, standoff, phase, position (where the stage stops), stage (of a length it moves)"`
+	Uncertainty  map[string]tolerance.Tolerance `key:"uncertainty" doc:"expanded uncertainty (k = 2) of full_scale and gain (of further channels: full_scale_quadrature …), gain, shunt, displacement, standoff, phase, position (where the stage stops), stage (of a length it moves)"`
 	Shunt        *Shunt                         `key:"shunt" doc:"the current shunt"`
 	Supply       SupplyState                    `key:"supply" doc:"off, or the supply voltage"`
 	StationFloor string                         `key:"station_floor" doc:"the step that holds the station's own floor"`

@@ -126,10 +126,10 @@ func (c *Capture) gainAt(role string, hz float64) (gain, relative float64) {
 func (c *Capture) levelComponents(role string, value, hz float64) []Component {
 	value = math.Abs(value)
 	var out []Component
-	if t, ok := c.Uncertainty["full_scale"]; ok || role != Sense {
+	if t, ok := c.uncertainty("full_scale", role); ok || role != Sense {
 		out = append(out, Component{"full scale of the " + role + " input (calibration)", value * t.Standard(float64(c.FullScale[role])), 0})
 	}
-	if t, ok := c.Uncertainty["gain"]; ok {
+	if t, ok := c.uncertainty("gain", role); ok {
 		out = append(out, Component{"gain between module and input (calibration)", value * t.Standard(float64(c.Gain[role])), 0})
 	}
 	if _, u := c.gainAt(role, hz); u > 0 {

@@ -35,7 +35,7 @@ type Offer struct {
 
 // Module is what the plan says of the module's kind.
 type Module struct {
-	Kind    string             `key:"kind" need:"yes" among:"single IF" doc:"what comes out of it: single IF"`
+	Kind    string             `key:"kind" need:"yes" among:"single IF|two IF" doc:"what comes out of it: single IF, or two IF for a module with a second channel a quarter of a wave behind"`
 	Carrier quantity.Frequency `key:"carrier" need:"yes" range:">0" doc:"nominal carrier frequency"`
 }
 
@@ -79,7 +79,7 @@ type Schedule struct {
 // Acquisition is one recording: what is done and what is recorded.
 type Acquisition struct {
 	What     string          // for the operator: "noise floor", "position 2 of 3"
-	Roles    []string        // channels recorded at once: IF, Sense
+	Roles    []string        // channels recorded at once: IF, Quadrature, Sense
 	Frames   int             // frames to record
 	Position quantity.Length // target's place
 	Tones    []Tone          // target's motion; nil: still

@@ -28,6 +28,7 @@ type NoiseFloor struct {
 	Acquire   quantity.Time        `key:"acquire" range:">0" doc:"how long to record; default 6 s"`
 	Band      []quantity.Frequency `key:"band" range:">0" doc:"the band's edges; default 10 Hz to 1 kHz"`
 	Densities []quantity.Frequency `key:"densities" range:">0" doc:"frequencies at which the noise density is wanted"`
+	Channel   string               `key:"channel" among:"if|quadrature" doc:"which output: if (default), or quadrature for a module of the kind two IF"`
 	Mains     quantity.Frequency   `key:"mains" range:">0" doc:"mains frequency; default 50 Hz"`
 	FloorAge  *quantity.Time       `key:"floor_age" range:">=0" doc:"how old the station's own floor, taken with the module unpowered, may be; default 1 h; 0 s takes it for every unit"`
 }
@@ -48,7 +49,10 @@ func (m *NoiseFloor) Readings() []Offer {
 func densitySuffix(f quantity.Frequency) string { return ".density(" + f.String() + ")" }
 
 // Check refuses an impossible band, and a record too short for its lower edge.
-func (m *NoiseFloor) Check(Module) error {
+func (m *NoiseFloor) Check(module Module) error {
+	if err := checkChannel(m.Channel, module); err != nil {
+		return err
+	}
 	if err := checkBand(m.Band); err != nil {
 		return err
 	}
@@ -78,7 +82,7 @@ func (m *NoiseFloor) Prepare(b Bench) (Schedule, error) {
 		age = *m.FloorAge
 	}
 	frames := int(math.Round(float64(m.Acquire) * float64(b.SampleRate)))
-	return Schedule{FloorAge: &age, Acquisitions: []Acquisition{{What: "noise floor", Roles: []string{IF}, Frames: frames, Settle: 0.2}}}, nil
+	return Schedule{FloorAge: &age, Acquisitions: []Acquisition{{What: "noise floor", Roles: []string{m.role()}, Frames: frames, Settle: 0.2}}}, nil
 }
 
 // noiseSpectrum is a capture's power density referred to the module's output, V²/Hz.
@@ -122,15 +126,15 @@ func (m *NoiseFloor) Evaluate(c *Capture) (Result, error) {
 
 // spectrum checks a capture and makes its power density.
 func (m *NoiseFloor) spectrum(c *Capture) (*noiseSpectrum, *Void, error) {
-	s, err := c.channel(0, IF)
+	s, err := c.channel(0, m.role())
 	if err != nil {
 		return nil, nil, err
 	}
-	scale, err := c.volts(IF)
+	scale, err := c.volts(m.role())
 	if err != nil {
 		return nil, nil, err
 	}
-	if err := m.Check(Module{}); err != nil {
+	if err := m.Check(Module{Kind: TwoIF}); err != nil {
 		return nil, nil, fmt.Errorf("step %s: %w", c.Step, err)
 	}
 	low, high := float64(m.Band[0]), float64(m.Band[1])
@@ -140,7 +144,7 @@ func (m *NoiseFloor) spectrum(c *Capture) (*noiseSpectrum, *Void, error) {
 	if seconds := float64(len(s.Samples)) / s.Rate; seconds*low < 10 {
 		return nil, nil, fmt.Errorf("step %s: a record of %.3g s is too short for a band that starts at %v: record at least %v", c.Step, seconds, m.Band[0], quantity.Time(10/low))
 	}
-	if v := check(s, "if"); v != nil {
+	if v := check(s, m.role()); v != nil {
 		return nil, v, nil
 	}
 	top := 1.2 * high
@@ -152,7 +156,7 @@ func (m *NoiseFloor) spectrum(c *Capture) (*noiseSpectrum, *Void, error) {
 		return nil, v, nil
 	}
 	n := m.withoutMains(d.Samples, d.Rate, low, high, func(hz float64) float64 {
-		gain, _ := c.gainAt(IF, hz)
+		gain, _ := c.gainAt(m.role(), hz)
 		return scale / gain
 	})
 	return n, nil, nil
@@ -257,7 +261,7 @@ func (m *NoiseFloor) root(c *Capture, name, unit string, hz float64, total, floo
 	if hasFloor {
 		components = append(components, Component{"scatter of the station's floor", floor.Sigma / (2 * r.Value), floor.Dof})
 	}
-	r.Budget = Combine(append(components, c.levelComponents(IF, r.Value, hz)...)...)
+	r.Budget = Combine(append(components, c.levelComponents(m.role(), r.Value, hz)...)...)
 	return r
 }
 
@@ -297,7 +301,7 @@ func (m *NoiseFloor) mainsReading(c *Capture, n *noiseSpectrum) Reading {
 	high := math.Sqrt(math.Max(n.mains+k*n.mainsSigma, 0.1*n.mainsSigma))
 	low := math.Sqrt(math.Max(n.mains-k*n.mainsSigma, 0))
 	r.Value = (low + high) / 2
-	r.Budget = Combine(append([]Component{{"noise under the mains lines", (high - low) / 2 / k, 0}}, c.levelComponents(IF, r.Value, float64(m.Mains))...)...)
+	r.Budget = Combine(append([]Component{{"noise under the mains lines", (high - low) / 2 / k, 0}}, c.levelComponents(m.role(), r.Value, float64(m.Mains))...)...)
 	if n.mains < 2*n.mainsSigma {
 		r.Notes = append(r.Notes, "the mains lines do not stand out of the noise")
 	}

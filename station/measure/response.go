@@ -28,6 +28,7 @@ type Response struct {
 	Band      []quantity.Frequency `key:"band" range:">0" doc:"the band's edges; default 10 Hz to 1 kHz"`
 	Tones     int                  `key:"tones" range:">0" doc:"how many tones; default 31"`
 	Reference quantity.Frequency   `key:"reference" range:">0" doc:"frequency of 0 dB: the nearest tone is taken; default 80 Hz"`
+	Channel   string               `key:"channel" among:"if|quadrature" doc:"which output: if (default), or quadrature for a module of the kind two IF"`
 	Acquire   quantity.Time        `key:"acquire" range:">0" doc:"length of the record (stepped: at each tone); default 4 s"`
 	Mains     quantity.Frequency   `key:"mains" range:">0" doc:"mains frequency, which the tones keep clear of; default 50 Hz"`
 	Largest   quantity.Length      `key:"displacement" range:">0" doc:"peak displacement of the whole motion; default 0.1 mm, less where the target cannot"`
@@ -44,7 +45,10 @@ func (m *Response) Readings() []Offer {
 }
 
 // Check refuses parameters that cannot work.
-func (m *Response) Check(Module) error {
+func (m *Response) Check(module Module) error {
+	if err := checkChannel(m.Channel, module); err != nil {
+		return err
+	}
 	if err := checkBand(m.Band); err != nil {
 		return err
 	}
@@ -97,7 +101,7 @@ func (m *Response) Prepare(b Bench) (Schedule, error) {
 	case "sweep":
 		return m.sweepSchedule(c, b, tones, frames)
 	}
-	return Schedule{Conditions: c, Acquisitions: []Acquisition{{What: "response", Roles: []string{IF}, Frames: frames, Period: frames, Tones: tones, Settle: 0.5}}}, nil
+	return Schedule{Conditions: c, Acquisitions: []Acquisition{{What: "response", Roles: []string{m.role()}, Frames: frames, Period: frames, Tones: tones, Settle: 0.5}}}, nil
 }
 
 // scale finds the factor to displacements that keeps the peak excursion and the
@@ -133,7 +137,7 @@ func (m *Response) steppedSchedule(c Conditions, b Bench, tones []Tone, frames i
 		x = math.Min(x, 0.9*float64(b.LargestDrive)*float64(b.PerVolt(t.Frequency)))
 		t.Displacement, t.Phase = quantity.Length(x), 0
 		tones[i] = t
-		s.Acquisitions = append(s.Acquisitions, Acquisition{What: fmt.Sprintf("response, tone %d of %d", i+1, len(tones)), Roles: []string{IF},
+		s.Acquisitions = append(s.Acquisitions, Acquisition{What: fmt.Sprintf("response, tone %d of %d", i+1, len(tones)), Roles: []string{m.role()},
 			Frames: frames, Period: frames, Tones: []Tone{t}, Settle: 0.3})
 		c.Parts = append(c.Parts, Part{Tone: &t})
 	}
@@ -205,11 +209,11 @@ func (m *Response) fromSteps(c *Capture) ([]toneLevel, *Void, error) {
 
 // fromMultitone fits the tones of one record at once.
 func (m *Response) fromMultitone(c *Capture, part int, tones []Tone) ([]toneLevel, *Void, error) {
-	s, err := c.channel(part, IF)
+	s, err := c.channel(part, m.role())
 	if err != nil {
 		return nil, nil, err
 	}
-	volts, err := c.volts(IF)
+	volts, err := c.volts(m.role())
 	if err != nil {
 		return nil, nil, err
 	}
@@ -228,7 +232,7 @@ func (m *Response) fromMultitone(c *Capture, part int, tones []Tone) ([]toneLeve
 	if top > 0.49*s.Rate {
 		return nil, nil, fmt.Errorf("step %s: a tone of %v is beyond what a sample rate of %.0f Hz holds", c.Step, quantity.Frequency(top), s.Rate)
 	}
-	if v := check(s, "if"); v != nil {
+	if v := check(s, m.role()); v != nil {
 		return nil, v, nil
 	}
 	d := signal.Decimate(s.Samples, s.Rate, math.Min(1.12*top, 0.45*s.Rate))
@@ -265,7 +269,7 @@ func (m *Response) fromMultitone(c *Capture, part int, tones []Tone) ([]toneLeve
 			return nil, v, nil
 		}
 		made := 2 * math.J1(beta) * pi0 / math.J0(beta)
-		gain, gainU := c.gainAt(IF, driven[i])
+		gain, gainU := c.gainAt(m.role(), driven[i])
 		a := cmplx.Abs(fit.Amplitude[i]) * volts / gain
 		sigma := math.Sqrt(noise.Value/seconds) * volts / gain
 		out[i] = toneLevel{driven[i], a / made, sigma / made, noise.Dof, a, sigma, c.shape(t, gainU)}

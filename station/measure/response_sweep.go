@@ -34,7 +34,7 @@ func (m *Response) sweepSchedule(c Conditions, b Bench, tones []Tone, frames int
 		return Schedule{}, fmt.Errorf("the sweep's end %v is too near half the sample rate", sweep.To)
 	}
 	c.Tones, c.Sweep = tones, &sweep
-	return Schedule{Conditions: c, Acquisitions: []Acquisition{{What: "response, sweep", Roles: []string{IF}, Frames: frames, Tones: tones, Sweep: &sweep, Settle: 0.3}}}, nil
+	return Schedule{Conditions: c, Acquisitions: []Acquisition{{What: "response, sweep", Roles: []string{m.role()}, Frames: frames, Tones: tones, Sweep: &sweep, Settle: 0.3}}}, nil
 }
 
 // SweepSamples is a logarithmic sweep of amplitude one after its lead: sin of the phase
@@ -60,18 +60,18 @@ func SweepSamples(s Sweep, rate float64, frames int) []float64 {
 // the quotient is a short impulse response's: over a narrow span of lines it is a constant
 // and a slope, turned by the latency; what the straight line leaves is the scatter.
 func (m *Response) fromSweep(c *Capture) ([]toneLevel, *Void, error) {
-	s, err := c.channel(0, IF)
+	s, err := c.channel(0, m.role())
 	if err != nil {
 		return nil, nil, err
 	}
-	volts, err := c.volts(IF)
+	volts, err := c.volts(m.role())
 	if err != nil {
 		return nil, nil, err
 	}
 	if len(c.Tones) == 0 {
 		return nil, nil, fmt.Errorf("step %s: the sweep's displacement is not given: add tones: [{frequency: …, displacement: …}, …]", c.Step)
 	}
-	if v := check(s, "if"); v != nil {
+	if v := check(s, m.role()); v != nil {
 		return nil, v, nil
 	}
 	n := len(s.Samples)
@@ -86,7 +86,7 @@ func (m *Response) fromSweep(c *Capture) ([]toneLevel, *Void, error) {
 		half := math.Max(0.03*hz, 4*step)
 		value, sigma, dof := localTransfer(played, heard, step, delay, hz, half)
 		made := 2 * math.J1(phaseIndex(float64(t.Displacement), c.Carrier))
-		gain, gainU := c.gainAt(IF, hz)
+		gain, gainU := c.gainAt(m.role(), hz)
 		scale := volts / gain
 		out = append(out, toneLevel{hz, value * scale / made, sigma * scale / made, dof, value * scale, sigma * scale, c.shape(t, gainU)})
 	}

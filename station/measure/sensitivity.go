@@ -35,6 +35,7 @@ type Sensitivity struct {
 	Tone         quantity.Frequency `key:"tone" range:">0" doc:"frequency of the target's motion"`
 	Displacement quantity.Length    `key:"displacement" range:">0" doc:"peak displacement of the target"`
 	Positions    int                `key:"positions" range:">0" doc:"2 (default) or 3 standoffs λ/8 apart"`
+	Channel      string             `key:"channel" among:"if|quadrature" doc:"which output: if (default), or quadrature for a module of the kind two IF"`
 	Phase        *quantity.Angle    `key:"phase" doc:"φ0, for the method single"`
 	Acquire      quantity.Time      `key:"acquire" range:">0" doc:"how long to record at each position; default 1 s"`
 	Mains        quantity.Frequency `key:"mains" range:">0" doc:"mains frequency, whose lines are fitted beside the tone; default 50 Hz"`
@@ -66,6 +67,9 @@ func (m *Sensitivity) Readings() []Offer {
 
 // Check refuses parameters that the method cannot work with.
 func (m *Sensitivity) Check(module Module) error {
+	if err := checkChannel(m.Channel, module); err != nil {
+		return err
+	}
 	if m.Tone <= 0 || m.Displacement <= 0 {
 		return fmt.Errorf("sensitivity needs the target's tone and displacement: add tone: 40 Hz and displacement: 0.20 mm")
 	}
@@ -120,7 +124,7 @@ func (m *Sensitivity) at(b Bench, positions []quantity.Length) (Schedule, error)
 			return Schedule{}, fmt.Errorf("a position of %v is beyond the stage's travel of %v: use method: harmonics or single", p, b.Travel)
 		}
 		s.Conditions.Parts = append(s.Conditions.Parts, Part{Position: p})
-		s.Acquisitions = append(s.Acquisitions, Acquisition{What: fmt.Sprintf("echo, position %d of %d", i+1, len(positions)), Roles: []string{IF},
+		s.Acquisitions = append(s.Acquisitions, Acquisition{What: fmt.Sprintf("echo, position %d of %d", i+1, len(positions)), Roles: []string{m.role()},
 			Frames: frames, Period: frames, Position: p, Tones: []Tone{tone}, Settle: 0.3})
 	}
 	return s, nil
@@ -181,15 +185,15 @@ func (m *Sensitivity) Evaluate(c *Capture) (Result, error) {
 
 // fit fits the tone and its harmonics, and the mains beside them, at one position.
 func (m *Sensitivity) fit(c *Capture, part int, position, tone float64) (toneFit, *Void, error) {
-	s, err := c.channel(part, IF)
+	s, err := c.channel(part, m.role())
 	if err != nil {
 		return toneFit{}, nil, err
 	}
-	volts, err := c.volts(IF)
+	volts, err := c.volts(m.role())
 	if err != nil {
 		return toneFit{}, nil, err
 	}
-	if v := check(s, "if"); v != nil {
+	if v := check(s, m.role()); v != nil {
 		return toneFit{}, v, nil
 	}
 	d := signal.Decimate(s.Samples, s.Rate, math.Min(math.Max(8*tone, 250), 0.4*s.Rate))
@@ -225,7 +229,7 @@ func (m *Sensitivity) fit(c *Capture, part int, position, tone float64) (toneFit
 				return toneFit{}, v, nil
 			}
 		}
-		gain, _ := c.gainAt(IF, fit.FrequencyHz[k])
+		gain, _ := c.gainAt(m.role(), fit.FrequencyHz[k])
 		scale := volts / gain
 		out.harmonics = append(out.harmonics, harmonic{fit.Amplitude[k] * complex(scale, 0), math.Sqrt(noise.Value/seconds) * scale, noise.Dof})
 	}
@@ -238,7 +242,7 @@ func (m *Sensitivity) fit(c *Capture, part int, position, tone float64) (toneFit
 // calibrations are the components that every method's echo carries, for a dependence
 // dlnV/dlnX of the echo on the displacement.
 func (m *Sensitivity) calibrations(c *Capture, echo, onDisplacement float64) []Component {
-	out := c.levelComponents(IF, echo, float64(c.Target.Tone))
+	out := c.levelComponents(m.role(), echo, float64(c.Target.Tone))
 	if t, ok := c.Uncertainty["displacement"]; ok {
 		out = append(out, Component{"displacement of the target (calibration)", math.Abs(echo * onDisplacement * t.Standard(float64(c.Target.Displacement))), 0})
 	}
