@@ -156,10 +156,10 @@ func roughBeta(h harmonicsAt) (beta float64, seen bool) {
 	return betaOf(1, cmplx.Abs(h.echo[3].a)/cmplx.Abs(h.echo[1].a)), true
 }
 
-// betaOf solves J_{m+2}(β)/J_m(β) = ratio for 0 < β < 3, where the ratio rises steadily
-// (Abramowitz & Stegun 9.1.10, 9.1.27).
+// betaOf solves J_{m+2}(β)/J_m(β) = ratio for 0 < β < 3.8, where the ratio rises steadily
+// (Abramowitz & Stegun 9.1.10, 9.1.27; the first zero of J1 is 3.83).
 func betaOf(m int, ratio float64) float64 {
-	low, high := 0.0, 3.0
+	low, high := 0.0, 3.8
 	for range 60 {
 		middle := (low + high) / 2
 		if math.Jn(m+2, middle) < ratio*math.Jn(m, middle) {

@@ -272,14 +272,14 @@ func (b *bench) together(hz float64, size absolute) float64 {
 	if b.t.By != "accelerometer" || hz < size.hz {
 		return math.Hypot(own, size.shape)
 	}
+	// A walk's differences over two stretches correlate by the stretch they share.
 	const pair = 0.4771 // decades between a harmonic and the third of it
 	d := math.Log10(hz / size.hz)
-	shared, alone := math.Min(d, pair), math.Max(d-pair, 0)
-	rest := math.Max(pair-d, 0)
-	root := math.Sqrt(2.25*shared + alone + 0.25*rest)
-	each := float64(b.t.Flatness) / 2
-	_, u := b.plate.Own.At(quantity.Frequency(hz))
-	return math.Hypot(each*root, u/2)
+	r := 0.0
+	if d > 0 {
+		r = math.Min(d, pair) / math.Sqrt(d*pair)
+	}
+	return measure.CombineCorrelated([][]float64{{0, r}}, measure.Component{U: own}, measure.Component{U: size.shape}).Combined
 }
 
 // decades is what a walk of so much a decade leaves between two frequencies: the root of the

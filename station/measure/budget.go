@@ -32,15 +32,27 @@ const Coverage = 0.95
 
 // Combine makes the budget of uncorrelated components. A component of zero is kept,
 // so that a reader sees it was thought of.
-func Combine(components ...Component) Budget {
+func Combine(components ...Component) Budget { return CombineCorrelated(nil, components...) }
+
+// CombineCorrelated makes the budget of components of which some are correlated (GUM eq. 13 and
+// 16): r[i][k] is the correlation coefficient of components i and k, read for i < k; nil for none.
+// A component's U then carries the sign of its sensitivity. The degrees of freedom are those of
+// the uncorrelated case (the GUM gives no formula for others).
+func CombineCorrelated(r [][]float64, components ...Component) Budget {
 	b := Budget{Components: components, Coverage: Coverage}
 	variance, fourth := 0.0, 0.0
-	for _, c := range components {
+	for i, c := range components {
 		variance += c.U * c.U
 		if c.Dof > 0 {
 			fourth += c.U * c.U * c.U * c.U / c.Dof
 		}
+		if i < len(r) {
+			for k := i + 1; k < len(components); k++ {
+				variance += 2 * r[i][k] * c.U * components[k].U
+			}
+		}
 	}
+	variance = math.Max(0, variance)
 	b.Combined = math.Sqrt(variance)
 	if fourth > 0 {
 		b.Dof = variance * variance / fourth
