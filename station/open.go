@@ -20,6 +20,9 @@ func Sources(f *attach.File, a *attach.Attached, p *plan.Plan, limitsData []byte
 	for _, d := range a.Drivers {
 		out = append(out, snapshot("driver", d.Name, d.Content))
 	}
+	for _, c := range a.Setup.Files {
+		out = append(out, snapshot("calibration", c.Name(), c.Content()))
+	}
 	return out
 }
 

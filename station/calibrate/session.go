@@ -145,7 +145,7 @@ func (s *Session) record(ctx context.Context, p *play, inputs []int, frames int,
 	}
 	for _, c := range inputs {
 		if h := signal.Look(rec.Samples[c], s.rate()); h.AtFullScale >= 2 {
-			return rec, &overloaded{wrong("turn the input's level or what is connected down, and start again", "input %d is overloaded", c)}
+			return rec, &overloaded{wrong("turn the input's level or what is connected down, switch off any automatic gain, and start again", "input %d is overloaded", c)}
 		}
 	}
 	return rec, nil
