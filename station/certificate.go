@@ -124,7 +124,7 @@ func label(name string) string {
 		"curve": "response", "flatness": "flatness", "lower_edge": "lower edge", "upper_edge": "upper edge", "displacement": "displacement",
 		"current": "current", "noise": "noise", "wavelength": "wavelength", "residual": "residual of the fit",
 		"second": "second harmonic", "third": "third harmonic", "gain": "gain of Q to I",
-		"offset_i": "pick-up of I", "offset_q": "pick-up of Q", "correlation": "correlation of the noises"}
+		"offset_i": "pick-up of I", "offset_q": "pick-up of Q", "correlation": "correlation of the noises", "if": "IF"}
 	text := strings.ReplaceAll(step, "_", " ")
 	if inner, ok := strings.CutPrefix(part, "density("); ok {
 		text = "noise density at " + strings.TrimSuffix(inner, ")")
