@@ -193,7 +193,8 @@ const besselPlaces = 12
 // The stage goes through places over λ/2, so that every φ0 is covered, and so that what is no phase
 // modulation is told from it by how it goes with φ = φ0 − 4πp/λ: the third harmonic is
 // g·sin φ (phase modulation) + g·cos φ (the shaker's second harmonic) + g³·sin³ φ (cube law of the
-// IF) + g²·sin 2φ (its square law), g the range law; the first likewise. The plate's own
+// IF) + g²·sin 2φ (its square law) + a constant (picked up of the drive), g the range law; the
+// first likewise. The plate's own
 // third harmonic, as the accelerometer sees it, is taken off.
 func (b *bench) bessel(ctx context.Context) (absolute, error) {
 	out := absolute{}
@@ -224,9 +225,9 @@ func (b *bench) bessel(ctx context.Context) (absolute, error) {
 	if err != nil {
 		return out, err
 	}
-	// Small motion was measured at one place; its share of the fringe there is taken out.
-	psi := 4 * math.Pi * b.sine / b.lambda()
-	place := complex(f.fall(b.sine)*math.Sin(f.phi-psi), 0)
+	// Small motion was measured at two places; their share of the fringe is taken out.
+	at := func(p float64) float64 { return f.fall(p) * math.Sin(f.phi-4*math.Pi*p/b.lambda()) }
+	place := complex((at(b.sine)-at(b.opposite()))/2, 0)
 	third := f.third / (small.gain[3] / place)
 	if list[0].plate[1].a != 0 {
 		var own complex128
@@ -265,7 +266,7 @@ func (b *bench) overFringe(list []harmonicsAt, first []echoAt) (overFringe, erro
 		return f, wrong("run lotgate calibrate standoff first", "the standoff is not known, and with it how the echo falls with the distance")
 	}
 	values := signed(first)
-	q := []float64{0, 0, math.Log(b.lambda()), f.standoff, 2}
+	q := []float64{0, 0, math.Log(b.lambda()), f.standoff, 2, 0, 0, 1}
 	linear(first, values, q)
 	f.phi = math.Atan2(q[0], q[1])
 	var axis complex128
@@ -277,7 +278,7 @@ func (b *bench) overFringe(list []harmonicsAt, first []echoAt) (overFringe, erro
 	for i, e := range first {
 		g := f.fall(e.position)
 		sin, cos := math.Sincos(f.phi - 4*math.Pi*e.position/b.lambda())
-		columns[i] = []float64{g * sin, g * cos, g * g * g * sin * sin * sin, 2 * g * g * sin * cos}
+		columns[i] = []float64{g * sin, g * cos, g * g * g * sin * sin * sin, 2 * g * g * sin * cos, 1}
 	}
 	var err error
 	if f.first, f.firstU, err = alongFringe(list, columns, 1, f.axis); err != nil {
@@ -340,7 +341,7 @@ func products(tones []float64) []float64 {
 }
 
 // smallMotion measures it with four small tones beside the harmonics, on odd lines, so that
-// products of even order fall between them.
+// products of even order fall between them, at two opposite places of the fringe.
 func (b *bench) smallMotion(ctx context.Context, hz float64) (out smallMotion, err error) {
 	if b.t.By != "accelerometer" {
 		for n := 1; n <= 4; n++ {
@@ -365,23 +366,33 @@ func (b *bench) smallMotion(ctx context.Context, hz float64) (out smallMotion, e
 	tones := p.hz(b.s.rate())
 	var ratio [4]complex128
 	var square2 [4]float64
-	for range b.s.repeats() {
-		rec, err := b.s.shaken(ctx, p, []int{b.module.Channel, b.plate.Channel}, p.period)
-		if err != nil {
+	count := float64(2 * b.s.repeats())
+	for _, place := range []float64{b.opposite(), b.sine} {
+		if err := b.s.Bench.Target.MoveTo(ctx, quantity.Length(place)); err != nil {
 			return out, err
 		}
-		echo, _, err := b.s.fit(rec.Samples[b.module.Channel], append(slices.Clone(tones), products(tones)...))
-		if err != nil {
-			return out, err
+		sign := complex(1, 0)
+		if place != b.sine {
+			sign = -1
 		}
-		plate, _, err := b.s.fit(rec.Samples[b.plate.Channel], tones)
-		if err != nil {
-			return out, err
-		}
-		for n := range tones {
-			x := plate[n].a * b.displacement(tones[n])
-			ratio[n] += echo[n].a / b.chain(tones[n]) / x / complex(float64(b.s.repeats()), 0)
-			square2[n] += (square(echo[n].sigma/cmplx.Abs(echo[n].a)) + square(plate[n].sigma/cmplx.Abs(plate[n].a))) / square(float64(b.s.repeats()))
+		for range b.s.repeats() {
+			rec, err := b.s.shaken(ctx, p, []int{b.module.Channel, b.plate.Channel}, p.period)
+			if err != nil {
+				return out, err
+			}
+			echo, _, err := b.s.fit(rec.Samples[b.module.Channel], append(slices.Clone(tones), products(tones)...))
+			if err != nil {
+				return out, err
+			}
+			plate, _, err := b.s.fit(rec.Samples[b.plate.Channel], tones)
+			if err != nil {
+				return out, err
+			}
+			for n := range tones {
+				x := plate[n].a * b.displacement(tones[n])
+				ratio[n] += sign * echo[n].a / b.chain(tones[n]) / x / complex(count, 0)
+				square2[n] += (square(echo[n].sigma/cmplx.Abs(echo[n].a)) + square(plate[n].sigma/cmplx.Abs(plate[n].a))) / square(count)
+			}
 		}
 	}
 	for n := range tones {
@@ -392,3 +403,7 @@ func (b *bench) smallMotion(ctx context.Context, hz float64) (out smallMotion, e
 	}
 	return out, nil
 }
+
+// opposite is the place of the stage λ/4 before that with the large first harmonic: φ is turned by
+// π, so that the difference of both holds nothing of what is picked up of the drive.
+func (b *bench) opposite() float64 { return b.sine - b.lambda()/4 }

@@ -120,7 +120,7 @@ func square(v float64) float64 { return v * v }
 
 // multitone is tones on odd lines, even over the logarithm of frequency, clear of the mains.
 func (s *Session) multitone(seconds, low, high float64, count int) play {
-	lines := signal.OddLines(seconds, low, high, count, 4, float64(s.Setup.Mains), 3/seconds)
+	lines := signal.OddLines(seconds, low, high, count, 2, float64(s.Setup.Mains), 3/seconds)
 	even := make([]float64, len(lines))
 	for i := range even {
 		even[i] = 1

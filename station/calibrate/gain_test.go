@@ -40,9 +40,10 @@ func TestGainRecoversTheTruth(t *testing.T) {
 		}
 		v := f.Values[calibration.GainValue]
 		divider.add(truth(b), v, 0.001*v.Value.Value)
+		tones := s.multitone(gainSeconds, 0.8, highestHz, 37)
 		for hz, c := range at {
 			g, u := calibration.GainOf(f).At(quantity.Frequency(hz))
-			c.add(preamplifierGain(hz, settings.Sound.Uneven)/preamplifierGain(80, settings.Sound.Uneven), calibration.Found(g, g*quantity.Ratio(u)), float64(g)*u)
+			c.add(preamplifierGain(hz, settings.Sound.Uneven)/preamplifierGain(80, settings.Sound.Uneven), calibration.Found(g, g*quantity.Ratio(u)), float64(g)*toneLimit(settings, tones, gainSeconds, float64(b.Actual().IFFullScale)))
 		}
 		if seed%4 == 0 {
 			s, b = open(t, settings)
@@ -65,7 +66,7 @@ func TestGainRecoversTheTruth(t *testing.T) {
 
 func TestShuntRecoversTheTruth(t *testing.T) {
 	resistance := tally{name: "shunt", limit: "load resistor and voltmeter"}
-	offset := tally{name: "offset with no load", limit: "noise at the chopping frequency"}
+	offset := tally{name: "offset with no load", limit: "noise at the chopping frequency, load and voltmeter"}
 	for seed := range benches(t) {
 		settings := draw(seed)
 		s, b := open(t, settings)
@@ -80,7 +81,8 @@ func TestShuntRecoversTheTruth(t *testing.T) {
 		v := f.Values[calibration.Resistance]
 		resistance.add(float64(a.Shunt), v, math.Hypot(0.001, 0.001)*v.Value.Value)
 		o := f.Values[calibration.Offset]
-		offset.add(float64(settings.Shunt.Offset)/float64(a.Shunt)/float64(a.SenseGain), o, o.Uncertainty.Value)
+		noise := 2 * float64(settings.Sound.Noise) / math.Sqrt(3*2) * math.Pi / 2 / float64(a.Shunt) / float64(a.SenseGain)
+		offset.add(float64(settings.Shunt.Offset)/float64(a.Shunt)/float64(a.SenseGain), o, math.Hypot(noise, math.Hypot(0.001, 0.001)*o.Value.Value))
 	}
 	resistance.check(t)
 	offset.check(t)

@@ -138,24 +138,16 @@ func (l Level) atVoltage(ctx context.Context, s *Session, channel int, volts flo
 		return atLevel{}, wrong("turn the meter's leads round, or check the source", "the voltmeter reads %v", quantity.Voltage(read))
 	}
 	s.tell("chopping at %v", l.Reference)
-	var fundamental gather
-	even := 0.0
-	for range s.repeats() {
-		t, err := s.choppedTones(ctx, channel, float64(l.Reference), 2)
-		if err != nil {
-			return atLevel{}, err
-		}
-		fundamental.add(cmplx.Abs(t.odd[0].a), t.odd[0].sigma)
-		even = math.Max(even, cmplx.Abs(t.second.a)-2*t.second.sigma)
-	}
-	if err := fundamental.agree("the chopped voltage", 1e-4); err != nil {
+	t, err := s.choppedTones(ctx, channel, float64(l.Reference), 2)
+	if err != nil {
 		return atLevel{}, err
 	}
-	a, u, scatter := fundamental.mean()
+	a, u, _ := t.odd[0].mean()
+	even := t.second - 3*t.odd[0].sigma
 	if a < 20*u {
 		return atLevel{}, wrong("check the cable, the channel number and that the chopper runs", "input %d hears nothing of the chopped voltage", channel)
 	}
-	out := atLevel{fullScale: 2 / math.Pi * read / a, relative: u / a, scatter: scatter}
+	out := atLevel{fullScale: 2 / math.Pi * read / a, relative: u / a, scatter: t.scatter}
 	// Duty d: a_1 = (2/π)·sin(πd), a_2 = (1/π)·sin(2πd): for d = ½ + ε the second harmonic tells ε
 	// and the fundamental is 1 − (πε)²/2 of its value.
 	epsilon := math.Max(0, even/a) // a_2/a_1 ≈ πε
@@ -166,44 +158,71 @@ func (l Level) atVoltage(ctx context.Context, s *Session, channel int, volts flo
 	return out, nil
 }
 
-// squareTones are the odd multiples of a chopped voltage, and the second.
+// squareTones are the first odd multiples of a chopped voltage, and the second, over repeats:
+// peaks as fractions of full scale.
 type squareTones struct {
-	hz     []float64
-	odd    []found
-	second found
+	hz      []float64
+	odd     []gather
+	second  float64 // largest
+	scatter float64 // relative, of one repeat's fundamental
 }
 
-// choppedTones records a chopped voltage and fits its lines.
-func (s *Session) choppedTones(ctx context.Context, channel int, chop, seconds float64) (squareTones, error) {
+// choppedTones records a chopped voltage repeatedly and reads its lines one by one. The noise of a
+// line is what the repeats scatter by, all lines together: it is the same for all of them.
+func (s *Session) choppedTones(ctx context.Context, channel int, chop, seconds float64) (out squareTones, err error) {
 	if err := s.Bench.Chopper.Chop(ctx, quantity.Frequency(chop)); err != nil {
-		return squareTones{}, err
+		return out, err
 	}
-	rec, err := s.record(ctx, nil, []int{channel}, s.frames(seconds), nil)
-	if stop := s.Bench.Chopper.Chop(context.WithoutCancel(ctx), 0); err == nil {
-		err = stop
+	defer func() {
+		if stop := s.Bench.Chopper.Chop(context.WithoutCancel(ctx), 0); err == nil {
+			err = stop
+		}
+	}()
+	for n := 1.0; n < 2*harmonicsOf && n*chop < 0.42*s.rate(); n += 2 {
+		out.hz = append(out.hz, n)
 	}
-	if err != nil {
-		return squareTones{}, err
-	}
-	const most = 2*harmonicsOf - 1
-	d := signal.DecimateFine(rec.Samples[channel], s.rate(), math.Min(math.Max(1.5*most*chop, 60), 0.42*s.rate()))
-	// The controller's clock is not the sound interface's.
-	true1 := signal.StrongestNear(d.Samples, d.Rate, chop, 0.03)
-	var hz, all []float64
-	for n := 1.0; n*true1 < 0.46*d.Rate; n += 2 {
-		// All odd lines that the record holds are fitted, so that none leaks into those used.
-		all = append(all, n*true1)
-		if n <= most {
-			hz = append(hz, n*true1)
+	out.odd = make([]gather, len(out.hz))
+	first := 0.0
+	for range s.repeats() {
+		rec, err := s.record(ctx, nil, []int{channel}, s.frames(seconds), nil)
+		if err != nil {
+			return out, err
+		}
+		x := rec.Samples[channel]
+		// The controller's clock is not the sound interface's.
+		w := signal.RefineTone(x, 2*math.Pi*signal.StrongestNear(x, s.rate(), chop, 0.03)/s.rate())
+		first += w * s.rate() / (2 * math.Pi) / float64(s.repeats())
+		lines := []float64{2 * w}
+		for _, n := range out.hz {
+			lines = append(lines, n*w)
+		}
+		tones := signal.WindowedTones(x, lines)
+		out.second = math.Max(out.second, cmplx.Abs(tones[0]))
+		for i := range out.odd {
+			out.odd[i].values = append(out.odd[i].values, cmplx.Abs(tones[i+1]))
 		}
 	}
-	all = append(all, 2*true1)
-	fits, fit, err := s.fitAt(d.Samples, d.Rate, all)
-	if err != nil {
-		return squareTones{}, err
+	for i := range out.hz {
+		out.hz[i] *= first
 	}
-	copy(hz, fit.FrequencyHz)
-	return squareTones{hz: hz, odd: fits[:len(hz)], second: fits[len(fits)-1]}, nil
+	return out, pool(out.odd, &out.scatter)
+}
+
+// pool gives all lines the scatter that they show together, and refuses repeats whose strongest
+// line differs by far more.
+func pool(lines []gather, scatter *float64) error {
+	square, dof := 0.0, 0.0
+	for _, g := range lines {
+		v, _, relative := g.mean()
+		n := float64(len(g.values))
+		square, dof = square+(n-1)*v*v*relative*relative, dof+n-1
+	}
+	sigma := math.Sqrt(square / dof)
+	for i := range lines {
+		lines[i].sigma = math.Max(sigma, 1e-9)
+	}
+	_, _, *scatter = lines[0].mean()
+	return lines[0].agree("the chopped voltage", 1e-3)
 }
 
 // response collects ln(n·a_n) over frequency at all chopping frequencies.
@@ -217,21 +236,14 @@ func (l Level) response(ctx context.Context, s *Session, channel int, volts floa
 	for _, chop := range l.chops() {
 		seconds := math.Max(2, 24/chop)
 		s.tell("chopping at %v for %.0f s", quantity.Frequency(chop), seconds*float64(s.repeats()))
-		gathers := make([]gather, harmonicsOf)
-		var hz []float64
-		for range s.repeats() {
-			t, err := s.choppedTones(ctx, channel, chop, seconds)
-			if err != nil {
-				return nil, err
-			}
-			hz = t.hz
-			for i, o := range t.odd {
-				gathers[i].add(cmplx.Abs(o.a)*float64(2*i+1), o.sigma*float64(2*i+1))
-			}
+		t, err := s.choppedTones(ctx, channel, chop, seconds)
+		if err != nil {
+			return nil, err
 		}
-		for i := range hz {
-			if v, u, _ := gathers[i].mean(); hz[i] <= highestHz && v > 10*u {
-				out = append(out, signal.Scattered{X: math.Log(hz[i]), Y: math.Log(v), Sigma: math.Hypot(u/v, leastRelative)})
+		for i, hz := range t.hz {
+			n := float64(2*i + 1)
+			if v, u, _ := t.odd[i].mean(); hz <= highestHz && v > 10*u {
+				out = append(out, signal.Scattered{X: math.Log(hz), Y: math.Log(n * v), Sigma: math.Hypot(u/v, leastRelative)})
 			}
 		}
 	}
@@ -239,7 +251,7 @@ func (l Level) response(ctx context.Context, s *Session, channel int, volts floa
 }
 
 // leastRelative is the relative standard uncertainty below which no amplitude is trusted.
-const leastRelative = 1e-7
+const leastRelative = 1e-9
 
 // curve fits the high-pass and what is left over, and fills the file's curve.
 func (l Level) curve(f *calibration.File, points []signal.Scattered) error {
@@ -256,9 +268,8 @@ func (l Level) curve(f *calibration.File, points []signal.Scattered) error {
 	if err != nil {
 		return err
 	}
-	slope, slopeU := smooth.Coefficient(1)
-	found := quantity.Frequency(math.Exp(corner + slope))
-	f.Values[calibration.HighPass] = calibration.Found(found, found*quantity.Frequency(expanded(slopeU)))
+	found := quantity.Frequency(math.Exp(corner))
+	f.Values[calibration.HighPass] = calibration.Found(found, found*quantity.Frequency(expanded(cornerU(points, corner)*math.Sqrt(math.Max(1, smooth.Misfit)))))
 	reference := math.Log(float64(l.Reference))
 	// The curve holds what the high-pass, at the corner as it is written, leaves over.
 	written := func(x float64) float64 { return -0.5 * math.Log1p(math.Exp(2*(math.Log(float64(found))-x))) }
@@ -299,6 +310,16 @@ func fitCorner(points []signal.Scattered) float64 {
 		}
 	}
 	return best
+}
+
+// cornerU is the standard uncertainty of ln fc that the points' scatter leaves.
+func cornerU(points []signal.Scattered, corner float64) float64 {
+	var s0, s1, s2 float64
+	for _, p := range points {
+		w, g := 1/(p.Sigma*p.Sigma), -1/(1+math.Exp(2*(p.X-corner)))
+		s0, s1, s2 = s0+w, s1+w*g, s2+w*g*g
+	}
+	return math.Sqrt(s0 / (s0*s2 - s1*s1))
 }
 
 // alternating finds full scale from an AC voltage.

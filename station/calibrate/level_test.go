@@ -32,11 +32,12 @@ func TestLevelRecoversTheTruth(t *testing.T) {
 		fullScale := float64(b.Actual().IFFullScale) / reference // volts outside, with the high-pass before
 		v := f.Values[calibration.FullScale]
 		full.add(fullScale, v, 0.001*v.Value.Value)
-		corner.add(fc, f.Values[calibration.HighPass], f.Values[calibration.HighPass].Uncertainty.Value)
+		cornerLimit, gainLimit := inputLimits(t, truth, []float64{1, 2.5, 10, 100, 1500})
+		corner.add(fc, f.Values[calibration.HighPass], cornerLimit)
 		curve := calibration.GainOf(f)
 		for hz, c := range at {
 			g, u := curve.At(quantity.Frequency(hz))
-			c.add(highPassGain(hz, fc)/reference, calibration.Found(g, g*quantity.Ratio(u)), float64(g)*u)
+			c.add(highPassGain(hz, fc)/reference, calibration.Found(g, g*quantity.Ratio(u)), float64(g)*math.Hypot(gainLimit[hz], 2*leastRelative))
 		}
 		s, b = open(t, draw(seed))
 		f, err = Level{Input: "sense", Method: "ac", Meter: 0.005}.Run(t.Context(), s)

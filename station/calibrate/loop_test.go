@@ -32,7 +32,7 @@ func TestLoopRecoversTheTruth(t *testing.T) {
 		density := float64(settings.Sound.Noise) // V/√Hz at the input
 		tone := 0.5 * float64(b.Actual().IFFullScale)
 		v := f.Values[calibration.Latency]
-		latency.add(float64(settings.Sound.Latency), v, v.Uncertainty.Value)
+		latency.add(float64(settings.Sound.Latency), v, latencyLimit(t, settings, s.multitone(1, 200, 0.35*s.rate(), 31), s.rate(), float64(b.Actual().IFFullScale)))
 		v = f.Values[calibration.Clock]
 		// Rife & Boorstyn 1974: the variance of a tone's frequency is at least 24·σ²/(a²·T³) with σ² the
 		// power density over two (rad²/s²); two halves' phases cost a third more.

@@ -114,19 +114,77 @@ type fringes struct {
 	misfit                     float64 // mean square of the residuals, in their uncertainties
 }
 
-// model gives the echo at a place for (P, Q, lnλ, S, n): (S/(S+p))^n·(P·cos ψ − Q·sin ψ), ψ = 4πp/λ.
+// model gives the echo at a place for (P, Q, lnλ, S, n, r, o, Y): y·(1 + r·(y/Y)²) + o·Y with
+// y = (S/(S+p))^n·(P·cos ψ − Q·sin ψ), ψ = 4πp/λ, r the IF's cube law at an echo of Y, and o what
+// the IF picks up of the drive, wherever the target stands.
 func model(q []float64, p float64) float64 {
+	y := straightEcho(q, p)
+	return y*(1+q[5]*square(y/q[7])) + q[6]*q[7]
+}
+
+func straightEcho(q []float64, p float64) float64 {
 	sin, cos := math.Sincos(4 * math.Pi * p / math.Exp(q[2]))
 	return math.Pow(q[3]/(q[3]+p), q[4]) * (q[0]*cos - q[1]*sin)
 }
 
-// fitFringes fits by Gauss–Newton from the best of a grid of wavelengths and standoffs. free are
-// the parameters of model that are adjusted.
+// fitFringes fits the law, first by the echoes' own noise, then again with what they are beyond it,
+// taken for the stage's stopping a little off: an error of position counts by the slope there.
+// free are the parameters of model that are adjusted.
 func fitFringes(list []echoAt, values []float64, lambda, standoff float64, free []int) (fringes, error) {
+	out, err := fitOnce(list, values, lambda, standoff, free)
+	if err != nil {
+		return out, err
+	}
+	for range 3 {
+		astray := stopping(list, values, out.parameters, float64(len(values)-len(free)))
+		weighted := make([]echoAt, len(list))
+		for i, e := range list {
+			weighted[i] = e
+			weighted[i].sigma = math.Hypot(e.sigma, astray*slopeAt(out.parameters, e.position))
+		}
+		if out, err = fitOnce(weighted, values, out.lambda, out.standoff, free); err != nil {
+			return out, err
+		}
+	}
+	return out, nil
+}
+
+// slopeAt is the echo's change with the place, per metre.
+func slopeAt(q []float64, p float64) float64 {
+	const h = 1e-7
+	return (model(q, p+h) - model(q, p-h)) / (2 * h)
+}
+
+// stopping is the standard deviation of the stage's places, m, that makes the residuals as large as
+// they are; zero where the noise explains them.
+func stopping(list []echoAt, values []float64, q []float64, dof float64) float64 {
+	excess := func(astray float64) float64 {
+		sum := 0.0
+		for i, e := range list {
+			sum += square(values[i]-model(q, e.position)) / (e.sigma*e.sigma + square(astray*slopeAt(q, e.position)))
+		}
+		return sum - dof
+	}
+	low, high := 0.0, 1e-3
+	if excess(low) <= 0 {
+		return 0
+	}
+	for range 60 {
+		if middle := (low + high) / 2; excess(middle) > 0 {
+			low = middle
+		} else {
+			high = middle
+		}
+	}
+	return high
+}
+
+// fitOnce fits by Gauss–Newton from the best of a grid of wavelengths and standoffs.
+func fitOnce(list []echoAt, values []float64, lambda, standoff float64, free []int) (fringes, error) {
 	best, cost := []float64(nil), math.Inf(1)
 	for _, dl := range []float64{-0.02, -0.01, -0.005, 0, 0.005, 0.01, 0.02} {
 		for _, ds := range []float64{0.7, 0.85, 1, 1.2, 1.5} {
-			q := []float64{0, 0, math.Log(lambda * (1 + dl)), standoff * ds, 2}
+			q := []float64{0, 0, math.Log(lambda * (1 + dl)), standoff * ds, 2, 0, 0, largestOf(values)}
 			linear(list, values, q)
 			if c := costOf(list, values, q); c < cost {
 				best, cost = q, c
@@ -204,13 +262,21 @@ func result(list []echoAt, values []float64, q []float64, free []int, covariance
 	return out
 }
 
+func largestOf(values []float64) float64 {
+	top := 0.0
+	for _, v := range values {
+		top = math.Max(top, math.Abs(v))
+	}
+	return top
+}
+
 // linear solves for P and Q, the rest being given.
 func linear(list []echoAt, values []float64, q []float64) {
 	var cc, cs, ss, cy, sy float64
 	for i, e := range list {
 		w := 1 / (e.sigma * e.sigma)
-		c := model([]float64{1, 0, q[2], q[3], q[4]}, e.position)
-		s := model([]float64{0, 1, q[2], q[3], q[4]}, e.position)
+		c := model([]float64{1, 0, q[2], q[3], q[4], 0, 0, 1}, e.position)
+		s := model([]float64{0, 1, q[2], q[3], q[4], 0, 0, 1}, e.position)
 		cc, cs, ss, cy, sy = cc+w*c*c, cs+w*c*s, ss+w*s*s, cy+w*c*values[i], sy+w*s*values[i]
 	}
 	det := cc*ss - cs*cs
@@ -232,6 +298,11 @@ func gradient(q []float64, p float64, free []int) []float64 {
 	fall := math.Pow(q[3]/(q[3]+p), q[4])
 	wave := q[0]*cos - q[1]*sin
 	all := []float64{fall * cos, -fall * sin, fall * psi * (q[0]*sin + q[1]*cos), fall * wave * q[4] * p / (q[3] * (q[3] + p)), fall * wave * math.Log(q[3]/(q[3]+p))}
+	y := fall * wave
+	for i := range all {
+		all[i] *= 1 + 3*q[5]*square(y/q[7])
+	}
+	all = append(all, y*square(y/q[7]), q[7])
 	out := make([]float64, len(free))
 	for i, k := range free {
 		out[i] = all[k]

@@ -161,11 +161,7 @@ type found struct {
 // fit fits tones of known frequencies and gives each with its scatter from the noise around it;
 // mains lines are fitted beside them. clock follows a common clock deviation.
 func (s *Session) fit(x []float64, hz []float64) ([]found, signal.Fit, error) {
-	return s.fitAt(x, s.rate(), hz)
-}
-
-// fitAt is fit for samples of another rate.
-func (s *Session) fitAt(x []float64, rate float64, hz []float64) ([]found, signal.Fit, error) {
+	rate := s.rate()
 	line := rate / float64(len(x))
 	var fixed []float64
 	for h := 1.0; h <= 5; h++ {
@@ -187,7 +183,7 @@ func (s *Session) fitAt(x []float64, rate float64, hz []float64) ([]found, signa
 	seconds := float64(len(x)) / rate
 	out := make([]found, len(hz))
 	for i := range hz {
-		noise := signal.NoiseAround(residual, quiet, f.FrequencyHz[i], 14)
+		noise := signal.NoiseAround(residual, quiet, f.FrequencyHz[i], 30)
 		out[i] = found{f.Amplitude[i], math.Sqrt(noise.Value / seconds)}
 	}
 	return out, f, nil
@@ -248,9 +244,9 @@ func expanded(components ...float64) float64 {
 	return 2 * math.Sqrt(sum)
 }
 
-// relative is an expanded relative uncertainty as a curve's point carries it; at least one
-// part in a million, for a file cannot state none.
-func relative(u float64) tolerance.Tolerance { return tolerance.Percent(math.Max(u, 1e-6)) }
+// relative is an expanded relative uncertainty as a curve's point carries it; above zero, for a
+// file cannot state none (at the reference itself there is none).
+func relative(u float64) tolerance.Tolerance { return tolerance.Percent(math.Max(u, 1e-9)) }
 
 // begin brings the bench to its safe state before it is wired otherwise.
 func (s *Session) halt(ctx context.Context) error {

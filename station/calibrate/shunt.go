@@ -3,7 +3,6 @@ package calibrate
 import (
 	"context"
 	"math"
-	"math/cmplx"
 
 	"lotgate/fixtures"
 	"lotgate/fixtures/calibration"
@@ -40,7 +39,7 @@ func (h Shunt) Run(ctx context.Context, s *Session) (*calibration.File, error) {
 		return nil, wrong("give --load, such as 150 Ω", "the load's resistance of %v is not possible", h.Load)
 	}
 	if len(h.Supply) == 0 {
-		h.Supply = []quantity.Voltage{5, 4, 3}
+		h.Supply = []quantity.Voltage{5, 2.5, 0.5} // the lowest tells the offset's sign
 	}
 	if len(h.Supply) < 2 {
 		return nil, wrong("give two supply voltages or more", "one supply voltage tells resistance and offset not apart")
@@ -96,16 +95,13 @@ func (h Shunt) sense(ctx context.Context, s *Session, channel int, v quantity.Vo
 		return out, err
 	}
 	s.tell("supply %v", v)
-	var g gather
-	for range s.repeats() {
-		t, err := s.choppedTones(ctx, channel, float64(s.Setup.Shunt.Chop), 2)
-		if err != nil {
-			return out, err
-		}
-		g.add(cmplx.Abs(t.odd[0].a), t.odd[0].sigma)
+	t, err := s.choppedTones(ctx, channel, float64(s.Setup.Shunt.Chop), 2)
+	if err != nil {
+		return out, err
 	}
-	out.value, out.sigma, out.scatter = g.mean()
-	return out, g.agree("the sense voltage", 1e-3)
+	out.value, out.sigma, _ = t.odd[0].mean()
+	out.scatter = t.scatter
+	return out, nil
 }
 
 // straight is a line through points by weighted least squares.

@@ -6,6 +6,7 @@ import (
 	"math"
 
 	"lotgate/fixtures"
+	"lotgate/fixtures/attach"
 	"lotgate/fixtures/calibration"
 	"lotgate/limits/quantity"
 	"lotgate/station/measure"
@@ -16,8 +17,8 @@ import (
 //
 //	A(p) = A0·(S/(S+p))²·sin(φ0 − 4πp/λ)
 //
-// the echo's voltage falling with the square of the distance. S, φ0, λ and A0 come out by least
-// squares; what the law leaves over is stated, and counted as scatter.
+// the echo's voltage falling with the square of the distance. S, φ0, λ, A0, the IF's cube law and
+// what it picks up of the drive come out by least squares; what the law leaves over is stated, and counted as scatter.
 type Standoff struct {
 	Carrier quantity.Frequency // nominal
 	Tone    quantity.Frequency // default 40 Hz
@@ -70,19 +71,27 @@ func (d Standoff) Run(ctx context.Context, s *Session) (*calibration.File, error
 	if err := moving(list, values); err != nil {
 		return nil, err
 	}
-	return d.file(list, values, lambda, float64(s.Setup.Target.Standoff))
+	return d.file(list, values, lambda, s.Setup.Target)
 }
 
-func (d Standoff) file(list []echoAt, values []float64, lambda, expected float64) (*calibration.File, error) {
+// stageScale is the relative standard uncertainty of a length the stage moves, where the station
+// file does not state it (common practice: a lead screw of trade quality).
+const stageScale = 5e-4
+
+func (d Standoff) file(list []echoAt, values []float64, lambda float64, target attach.TargetSetup) (*calibration.File, error) {
+	expected, scale := float64(target.Standoff), stageScale
+	if target.Stage != nil {
+		scale = target.Stage.Standard(1)
+	}
 	if expected == 0 {
 		expected = 0.22
 	}
-	fit, err := fitFringes(list, values, lambda, expected, []int{0, 1, 2, 3})
+	fit, err := fitFringes(list, values, lambda, expected, []int{0, 1, 2, 3, 5, 6})
 	if err != nil {
 		return nil, err
 	}
 	f := &calibration.File{Calibration: calibration.Standoff, Repeats: 2, Method: "a scan of the stage with a module and a steady tone", Values: map[string]calibration.Value{}}
-	f.Values[calibration.Distance] = calibration.Found(quantity.Length(fit.standoff), quantity.Length(expanded(fit.standoffU)))
+	f.Values[calibration.Distance] = calibration.Found(quantity.Length(fit.standoff), quantity.Length(expanded(fit.standoffU, scale*fit.standoff)))
 	f.Values[calibration.Phase] = calibration.Found(quantity.Angle(fit.phase), quantity.Angle(expanded(fit.phaseU, 4*math.Pi*fit.standoff*supplyPushing/measure.SpeedOfLight)))
 	f.Values[calibration.RangeLaw] = calibration.Found(quantity.Ratio(fit.residual), quantity.Ratio(math.Max(fit.residual, 1e-6)))
 	f.Notes = append(f.Notes, fmt.Sprintf("the law of range and sine leaves %.2g %% of the largest echo over", 100*fit.residual))
@@ -93,7 +102,7 @@ func (d Standoff) file(list []echoAt, values []float64, lambda, expected float64
 		f.Notes = append(f.Notes, fmt.Sprintf("at the stage's zero this module stands near a null (|sin φ0| = %.2f): use the method positions, or move the zero by λ/8 = %v", math.Abs(math.Sin(fit.phase)), quantity.Length(lambda/8)))
 	}
 	if d.Ruler > 0 {
-		law, err := fitFringes(list, values, lambda, float64(d.Ruler), []int{0, 1, 2, 4})
+		law, err := fitFringes(list, values, lambda, float64(d.Ruler), []int{0, 1, 2, 4, 5, 6})
 		if err != nil {
 			return nil, err
 		}

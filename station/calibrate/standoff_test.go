@@ -8,10 +8,11 @@ import (
 
 	"lotgate/fixtures/calibration"
 	"lotgate/fixtures/virtual"
+	"lotgate/station/measure"
 )
 
 func TestStandoffRecoversTheTruth(t *testing.T) {
-	standoff := tally{name: "standoff", limit: "noise under the tone, by the law's Fisher information"}
+	standoff := tally{name: "standoff", limit: "noise under the tone, stage"}
 	phase := tally{name: "φ0", limit: standoff.limit}
 	for seed := range benches(t) {
 		settings := draw(seed)
@@ -20,12 +21,14 @@ func TestStandoffRecoversTheTruth(t *testing.T) {
 		if err != nil {
 			t.Fatal(seed, err)
 		}
+		distance, angle := scanLimits(t, settings, b.Truth(), float64(b.Actual().Standoff))
+		angle = math.Hypot(angle, 2*4*math.Pi*float64(b.Actual().Standoff)*supplyPushing/measure.SpeedOfLight)
 		v := f.Values[calibration.Distance]
-		standoff.add(float64(b.Actual().Standoff), v, v.Uncertainty.Value)
+		standoff.add(float64(b.Actual().Standoff), v, math.Hypot(distance, float64(b.Advertise().StageUncertainty)*v.Value.Value))
 		v = f.Values[calibration.Phase]
 		// φ0 is told modulo π: the difference is folded.
 		truth := v.Value.Value + math.Remainder(float64(b.Truth().Phase)-v.Value.Value, math.Pi)
-		phase.add(truth, v, v.Uncertainty.Value)
+		phase.add(truth, v, angle)
 	}
 	standoff.check(t)
 	phase.check(t)

@@ -13,6 +13,7 @@ import (
 	"lotgate/fixtures/virtual"
 	"lotgate/limits/quantity"
 	"lotgate/limits/quantity/curve"
+	"lotgate/limits/quantity/tolerance"
 )
 
 // benches is how many seeded benches each calibration is tried on: LOTGATE_COVERAGE, or few.
@@ -67,7 +68,8 @@ func open(t testing.TB, settings virtual.Settings) (*Session, *virtual.Bench) {
 		"sense": {Channel: a.SenseInput, Gain: 1},
 	}}
 	s.Setup.Shunt = &attach.ShuntSetup{Gain: a.SenseGain, Chop: a.Chop}
-	s.Setup.Target = attach.TargetSetup{Channel: a.ShakerOutput, FullScale: a.OutputFullScale, Standoff: a.Standoff, Largest: a.Excursion, Travel: a.Travel}
+	stage := tolerance.Percent(float64(a.StageUncertainty))
+	s.Setup.Target = attach.TargetSetup{Channel: a.ShakerOutput, FullScale: a.OutputFullScale, Standoff: a.Standoff, Largest: a.Excursion, Travel: a.Travel, Stage: &stage}
 	return s, b
 }
 

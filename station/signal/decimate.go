@@ -24,16 +24,6 @@ type Decimated struct {
 // within 1e-5 of one. The input is not changed; where no stage fits it is returned
 // as it is.
 func Decimate(x []float64, rate, passHz float64) Decimated {
-	return decimate(x, rate, passHz, stopBand)
-}
-
-// DecimateFine is Decimate with filters of 140 dB, whose gain is within 1e-7 of one, for
-// calibrations.
-func DecimateFine(x []float64, rate, passHz float64) Decimated {
-	return decimate(x, rate, passHz, 140)
-}
-
-func decimate(x []float64, rate, passHz, stopBand float64) Decimated {
 	d := Decimated{Samples: x, Rate: rate}
 	scratch, _ := scratches.Get().(*[]float64)
 	if scratch == nil {
@@ -44,7 +34,7 @@ func decimate(x []float64, rate, passHz, stopBand float64) Decimated {
 		*scratch = make([]float64, len(x)/2)
 	}
 	for {
-		side := halfBand(passHz/d.Rate, stopBand)
+		side := halfBand(passHz / d.Rate)
 		if side == nil || len(d.Samples) < 8*len(side) {
 			break
 		}
@@ -67,7 +57,7 @@ var scratches sync.Pool
 // halfBand gives the weights at odd distances 1, 3, 5 … from the centre (which has
 // ½) of a half-band low-pass that keeps 0…pass (in cycles per sample) clear of what
 // folds onto it; nil where the transition would be too narrow to pay.
-func halfBand(pass, stopBand float64) []float64 {
+func halfBand(pass float64) []float64 {
 	transition := 0.5 - 2*pass // of the band between pass and ½−pass
 	if transition < 0.06 {
 		return nil

@@ -13,8 +13,19 @@ type Scattered struct{ X, Y, Sigma float64 }
 // Smooth is a smooth curve through scattered values: a sum of given columns with free
 // coefficients and a Gaussian process for what they leave over (universal kriging; C.E.
 // Rasmussen & C.K.I. Williams, Gaussian Processes for Machine Learning, 2006, section 2.7).
-// It knows its own uncertainty everywhere, between the points too.
+// Size and reach of the process are not known: the curve is the mean over a grid of both,
+// each weighted by its restricted likelihood, and the scatter among them counts in its
+// uncertainty, which it knows everywhere, between the points too.
 type Smooth struct {
+	members []*process
+	weights []float64
+	// Misfit is the mean square of the residuals of the columns alone, in their standard
+	// uncertainties: about one where nothing is left over.
+	Misfit float64
+}
+
+// process is the curve for one size and reach.
+type process struct {
 	points     []Scattered
 	columns    func(x float64) []float64
 	size       float64 // of what the columns leave over, in Y
@@ -24,18 +35,18 @@ type Smooth struct {
 	normal     mat.Cholesky
 	beta       []float64
 	rest       *mat.VecDense // K⁻¹·(y − H·β)
-	// Misfit is the mean square of the residuals of the columns alone, in their standard
-	// uncertainties: about one where nothing is left over.
-	Misfit float64
 }
 
 // ErrTooFewPoints says that a curve has fewer points than coefficients.
 var ErrTooFewPoints = errors.New("too few points for a smooth curve")
 
-// FitSmooth fits a curve. Size and reach of what the columns leave over are those of the
-// greatest restricted likelihood on a grid; reaches are looked for from least to most.
+// leastWeight is the weight, over that of the best, below which a member is left out.
+const leastWeight = 1e-3
+
+// FitSmooth fits a curve. Reaches of what the columns leave over are looked for from least to
+// most, sizes from none to 100,000 times the points' own scatter.
 func FitSmooth(points []Scattered, columns func(x float64) []float64, least, most float64) (*Smooth, error) {
-	if len(points) <= len(columns(points[0].X)) {
+	if len(points) == 0 || len(points) <= len(columns(points[0].X)) {
 		return nil, ErrTooFewPoints
 	}
 	sigma := 0.0
@@ -43,45 +54,70 @@ func FitSmooth(points []Scattered, columns func(x float64) []float64, least, mos
 		sigma += math.Log(p.Sigma) / float64(len(points))
 	}
 	sigma = math.Exp(sigma)
-	var best *Smooth
-	likelihood := math.Inf(-1)
-	for _, size := range []float64{0, 0.3, 1, 3, 10, 30, 100, 300, 1e3, 3e3, 1e4, 3e4, 1e5} {
-		for reach := least; reach <= most*1.001; reach *= 1.6 {
-			s := &Smooth{points: points, columns: columns, size: size * sigma, reach: reach}
-			l, err := s.fit()
-			if err != nil {
+	out := &Smooth{}
+	var all []*process
+	var likelihood []float64
+	best := math.Inf(-1)
+	try := func(size, reach float64) error {
+		q := &process{points: points, columns: columns, size: size, reach: reach}
+		l, err := q.fit()
+		if err != nil || math.IsInf(l, -1) {
+			return err
+		}
+		if size == 0 {
+			out.Misfit = q.misfit()
+		}
+		all, likelihood, best = append(all, q), append(likelihood, l), math.Max(best, l)
+		return nil
+	}
+	if err := try(0, most); err != nil {
+		return nil, err
+	}
+	for size := 0.3; size < 2e5; size *= 2 {
+		for reach := least; reach <= most*1.001; reach *= 1.4 {
+			if err := try(size*sigma, reach); err != nil {
 				return nil, err
-			}
-			if math.IsInf(l, -1) {
-				continue
-			}
-			if size == 0 {
-				s.Misfit = s.misfit()
-				reach = most * 2
-			} else if best != nil {
-				s.Misfit = best.Misfit
-			}
-			if l > likelihood {
-				best, likelihood = s, l
 			}
 		}
 	}
-	if best == nil {
+	total := 0.0
+	for i, q := range all {
+		if w := math.Exp(likelihood[i] - best); w > leastWeight {
+			out.members, out.weights = append(out.members, q), append(out.weights, w)
+			total += w
+		}
+	}
+	if len(out.members) == 0 {
 		return nil, ErrTooFewPoints
 	}
-	return best, nil
+	for i := range out.weights {
+		out.weights[i] /= total
+	}
+	return out, nil
+}
+
+// mean is the weighted mean over the members of what is asked of each, with the variance of a
+// mixture.
+func (s *Smooth) mean(of func(q *process) (y, variance float64)) (y, sigma float64) {
+	second := 0.0
+	for i, q := range s.members {
+		v, variance := of(q)
+		y += s.weights[i] * v
+		second += s.weights[i] * (variance + v*v)
+	}
+	return y, math.Sqrt(math.Max(0, second-y*y))
 }
 
 // mostCondition is the worst condition of a matrix that is still solved.
 const mostCondition = 1e14
 
-func (s *Smooth) kernel(a, b float64) float64 {
+func (s *process) kernel(a, b float64) float64 {
 	d := (a - b) / s.reach
 	return s.size * s.size * math.Exp(-d*d/2)
 }
 
 // fit solves for the coefficients and gives the logarithm of the restricted likelihood.
-func (s *Smooth) fit() (float64, error) {
+func (s *process) fit() (float64, error) {
 	n, p := len(s.points), len(s.columns(s.points[0].X))
 	k := mat.NewSymDense(n, nil)
 	h, y := mat.NewDense(n, p, nil), mat.NewVecDense(n, nil)
@@ -128,7 +164,7 @@ func (s *Smooth) fit() (float64, error) {
 
 // misfit is the mean square of what is left over, in standard uncertainties; without a
 // process K is diagonal.
-func (s *Smooth) misfit() float64 {
+func (s *process) misfit() float64 {
 	sum := 0.0
 	for i, p := range s.points {
 		r := s.rest.AtVec(i) * p.Sigma
@@ -143,7 +179,7 @@ type place struct {
 	x                   float64
 }
 
-func (s *Smooth) place(x float64) place {
+func (s *process) place(x float64) place {
 	n, p := len(s.points), len(s.beta)
 	q := place{x: x, h: mat.NewVecDense(p, s.columns(x)), k: mat.NewVecDense(n, nil), solved: mat.NewVecDense(n, nil), lever: mat.NewVecDense(p, nil)}
 	for i, a := range s.points {
@@ -157,18 +193,22 @@ func (s *Smooth) place(x float64) place {
 
 // At is the curve at a place with its standard uncertainty.
 func (s *Smooth) At(x float64) (y, sigma float64) {
-	q := s.place(x)
-	return s.value(q), math.Sqrt(math.Max(0, s.cross(q, q)))
+	return s.mean(func(q *process) (float64, float64) {
+		p := q.place(x)
+		return q.value(p), q.cross(p, p)
+	})
 }
 
 // Between is the curve at a place less that at another, with the standard uncertainty of the
 // difference.
 func (s *Smooth) Between(x, reference float64) (y, sigma float64) {
-	a, b := s.place(x), s.place(reference)
-	return s.value(a) - s.value(b), math.Sqrt(math.Max(0, s.cross(a, a)+s.cross(b, b)-2*s.cross(a, b)))
+	return s.mean(func(q *process) (float64, float64) {
+		a, b := q.place(x), q.place(reference)
+		return q.value(a) - q.value(b), q.cross(a, a) + q.cross(b, b) - 2*q.cross(a, b)
+	})
 }
 
-func (s *Smooth) value(q place) float64 {
+func (s *process) value(q place) float64 {
 	v := mat.Dot(q.k, s.rest)
 	for i, b := range s.beta {
 		v += b * q.h.AtVec(i)
@@ -177,17 +217,8 @@ func (s *Smooth) value(q place) float64 {
 }
 
 // cross is the covariance of the curve at two places.
-func (s *Smooth) cross(a, b place) float64 {
+func (s *process) cross(a, b place) float64 {
 	var solved mat.VecDense
 	_ = s.normal.SolveVecTo(&solved, b.lever)
 	return s.kernel(a.x, b.x) - mat.Dot(a.k, b.solved) + mat.Dot(a.lever, &solved)
-}
-
-// Coefficient is a column's coefficient with its standard uncertainty.
-func (s *Smooth) Coefficient(i int) (v, sigma float64) {
-	unit := mat.NewVecDense(len(s.beta), nil)
-	unit.SetVec(i, 1)
-	var solved mat.VecDense
-	_ = s.normal.SolveVecTo(&solved, unit)
-	return s.beta[i], math.Sqrt(solved.AtVec(i))
 }
