@@ -163,7 +163,11 @@ func (c *Capture) levelComponents(role string, value float64) []Component {
 	full, _ := c.uncertainty("full_scale", role)
 	out := []Component{{"full scale of the " + role + " input (calibration)", value * full.Standard(float64(c.FullScale[role])), 0}}
 	if t, ok := c.uncertainty("gain", role); ok {
-		out = append(out, Component{"gain between module and input (calibration)", value * t.Standard(float64(c.Gain[role])), 0})
+		source := "gain between module and input (calibration)"
+		if role == Quadrature {
+			source = "gain between module and quadrature input (calibration)"
+		}
+		out = append(out, Component{source, value * t.Standard(float64(c.Gain[role])), 0})
 	}
 	return out
 }
