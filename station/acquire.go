@@ -22,7 +22,7 @@ import (
 func (r *Runner) bench() measure.Bench {
 	t := r.Setup.Target
 	b := measure.Bench{Module: r.Plan.Module, SampleRate: r.Setup.Rate, Standoff: t.Standoff, Mains: r.Setup.Mains,
-		PerVolt: t.PerVolt, Largest: t.Largest, LargestDrive: t.FullScale, Travel: t.Travel}
+		PerVolt: t.PerVolt, Largest: t.Largest, LargestDrive: t.FullScale, Travel: t.Travel, Ripple: r.Bench.Ripple != nil}
 	if r.Setup.Shunt != nil {
 		b.Chop = r.Setup.Shunt.Chop
 	}
@@ -222,7 +222,7 @@ func (r *Runner) capture(ctx context.Context, a *record.Attempt, s plan.Step, sc
 		done(0)
 		var event func(context.Context) error
 		if q.Event != nil {
-			present = orElse(q.Event.Voltage, supply)
+			present = orElse(q.Event.Voltage, supply) + q.Event.By
 			event = func(ctx context.Context) error { return r.power(ctx, present, 0) }
 		}
 		signals, err := r.acquire(ctx, q, event, done)
@@ -362,6 +362,17 @@ func (r *Runner) acquire(ctx context.Context, q measure.Acquisition, event func(
 			return nil, err
 		}
 		defer func() { err = errors.Join(err, r.Bench.Chopper.Chop(context.WithoutCancel(ctx), 0)) }()
+	}
+	if q.Ripple != nil {
+		if r.Bench.Ripple == nil {
+			return nil, &fixtures.Fault{Where: "station file", What: "no device puts a ripple on the supply", Action: "name one under use: {ripple: …}"}
+		}
+		defer func() {
+			err = errors.Join(err, r.Bench.Ripple.Ripple(context.WithoutCancel(ctx), q.Ripple.Frequency, 0))
+		}()
+		if err := r.Bench.Ripple.Ripple(ctx, q.Ripple.Frequency, q.Ripple.Peak); err != nil {
+			return nil, err
+		}
 	}
 	if moving {
 		job.Play = map[int][]float32{r.Setup.Target.Channel: r.drive(q)}

@@ -14,7 +14,7 @@ import (
 
 // TestCarrierHoldsTheTruth: f0 from a stage with a scale error of its own that stops a little astray.
 func TestCarrierHoldsTheTruth(t *testing.T) {
-	covers(t, 12, "single IF", "  - {measure: carrier}\n", nil, func(b *virtual.Bench) map[string]float64 {
+	covers(t, 8, "single IF", "  - {measure: carrier}\n", nil, func(b *virtual.Bench) map[string]float64 {
 		f := float64(b.Truth().Carrier)
 		return map[string]float64{"carrier": f, "carrier.wavelength": 299792458 / f / 1.000315}
 	})

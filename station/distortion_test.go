@@ -20,7 +20,7 @@ func fundamental(b *virtual.Bench, displacement float64) float64 {
 
 // TestDistortionHoldsTheTruth: a law v + q·v² + r·v³ gives q·A/2 and r·A²/4 of a fundamental of the peak A.
 func TestDistortionHoldsTheTruth(t *testing.T) {
-	covers(t, 12, "single IF", "  - {measure: distortion}\n", func(s *virtual.Settings) {
+	covers(t, 8, "single IF", "  - {measure: distortion}\n", func(s *virtual.Settings) {
 		s.Population.Further.Cube.Median = 3000 // that it stands out of its uncertainty
 	}, func(b *virtual.Bench) map[string]float64 {
 		a := fundamental(b, 0.4e-3)
@@ -31,7 +31,7 @@ func TestDistortionHoldsTheTruth(t *testing.T) {
 // TestNoDistortionIsFoundWhereThereIsNone: the phase modulation's own harmonics are some ten per cent of the
 // fundamental, and nothing of them is taken for distortion.
 func TestNoDistortionIsFoundWhereThereIsNone(t *testing.T) {
-	covers(t, 12, "single IF", "  - {measure: distortion, displacement: 0.6 mm}\n", func(s *virtual.Settings) {
+	covers(t, 8, "single IF", "  - {measure: distortion, displacement: 0.6 mm}\n", func(s *virtual.Settings) {
 		s.Population.Further.Square.Median, s.Population.Further.Cube.Median = 0, 0
 	}, func(b *virtual.Bench) map[string]float64 {
 		return map[string]float64{"distortion.second": 0, "distortion.third": 0}

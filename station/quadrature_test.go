@@ -21,7 +21,7 @@ func quadratureTruths(b *virtual.Bench) map[string]float64 {
 }
 
 func TestQuadratureHoldsTheTruth(t *testing.T) {
-	covers(t, 12, "two IF", "  - {measure: quadrature}\n", func(s *virtual.Settings) {
+	covers(t, 8, "two IF", "  - {measure: quadrature}\n", func(s *virtual.Settings) {
 		secondInput(s)
 		s.Population.Further.Frame.Median = 0.005 // that it stands out of its scatter
 	}, quadratureTruths)
@@ -29,7 +29,7 @@ func TestQuadratureHoldsTheTruth(t *testing.T) {
 
 // TestQuadratureTellsWhichChannelLeads: with the second IF behind instead of before the first, and far from a quarter turn.
 func TestQuadratureTellsWhichChannelLeads(t *testing.T) {
-	covers(t, 8, "two IF", "  - {measure: quadrature, positions: 8}\n", func(s *virtual.Settings) {
+	covers(t, 6, "two IF", "  - {measure: quadrature, positions: 8}\n", func(s *virtual.Settings) {
 		secondInput(s)
 		s.Population.Further.Phase.Median, s.Population.Further.Frame.Median = -1.1, 0.005
 	}, quadratureTruths)
@@ -37,7 +37,7 @@ func TestQuadratureTellsWhichChannelLeads(t *testing.T) {
 
 // TestSecondChannelIsMeasuredAlone: echo, noise and response of the second output.
 func TestSecondChannelIsMeasuredAlone(t *testing.T) {
-	covers(t, 8, "two IF", `  - {measure: sensitivity, channel: quadrature, tone: 40 Hz, displacement: 0.20 mm}
+	covers(t, 5, "two IF", `  - {measure: sensitivity, channel: quadrature, tone: 40 Hz, displacement: 0.20 mm}
   - {measure: noise_floor, channel: quadrature, acquire: 4 s}
   - {measure: response, channel: quadrature}
 `, secondInput, func(b *virtual.Bench) map[string]float64 {

@@ -17,7 +17,7 @@ func TestParse(t *testing.T) {
 		{"-3 dB", DecibelUnit, -3}, {"−3 dB", DecibelUnit, -3}, {"0.4 %", One, 0.004}, {"200", One, 200}, {"6 ppm", One, 6e-6}, {"1e-3 V", Volt, 1e-3},
 		{"10.525 GHz", Hertz, 10.525e9}, {"10 Hz", Hertz, 10}, {"1 kHz", Hertz, 1000}, {"0.20 mm", Metre, 0.2e-3}, {"3 cm", Metre, 0.03}, {"2 m", Metre, 2},
 		{"1.5 s", Second, 1.5}, {"10 min", Second, 600}, {"1 h", Second, 3600}, {"250 ms", Second, 0.25}, {"180 °", RadianUnit, math.Pi}, {"23 °C", Celsius, 23},
-		{"0.5 mm/V", MetrePerVolt, 0.5e-3}, {"1.4 m/s", MetrePerSecond, 1.4}, {"+5 V", Volt, 5}, {".5 V", Volt, 0.5},
+		{"0.5 mm/V", MetrePerVolt, 0.5e-3}, {"1.4 m/s", MetrePerSecond, 1.4}, {"6 %/V", PerVoltUnit, 0.06}, {"-0.06 1/V", PerVoltUnit, -0.06}, {"+5 V", Volt, 5}, {".5 V", Volt, 0.5},
 	} {
 		v, err := Parse(c.text, c.unit)
 		if err != nil || math.Abs(v-c.want) > 1e-15*math.Abs(c.want) {

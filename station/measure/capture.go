@@ -35,6 +35,8 @@ type Conditions struct {
 	Target       *Motion                        `key:"target" doc:"the target's true motion"`
 	Tones        []Tone                         `key:"tones" doc:"the target's motion where it is more than one tone"`
 	Sweep        *Sweep                         `key:"sweep" doc:"the target's motion where it is a sweep; tones then gives displacement against frequency"`
+	Ripple       *RippleTone                    `key:"ripple" doc:"a sine on the supply"`
+	Stepped      *quantity.Voltage              `key:"stepped" doc:"by how much the supply was changed while recording"`
 	Reported     *quantity.Current              `key:"reported" doc:"current the supply reported itself"`
 	File         string                         `key:"file" doc:"the WAV file, where there is one"`
 	Parts        []Part                         `key:"parts" doc:"the WAV files, where there are several"`
@@ -55,6 +57,12 @@ type Motion struct {
 	Standoff     quantity.Length    `key:"standoff" range:">0" doc:"nominal distance from module to target"`
 	Position     quantity.Length    `key:"position" doc:"offset from the standoff, positive away from the module"`
 	Phase        *quantity.Angle    `key:"phase" doc:"φ0, for the method single"`
+}
+
+// RippleTone is a sine on the supply.
+type RippleTone struct {
+	Frequency quantity.Frequency `key:"frequency" need:"yes" range:">0" doc:"frequency"`
+	Peak      quantity.Voltage   `key:"peak" need:"yes" range:">0" doc:"peak of the sine"`
 }
 
 // Tone is one tone of the target's motion.

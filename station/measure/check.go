@@ -130,7 +130,11 @@ func (c *Capture) levelComponents(role string, value, hz float64) []Component {
 		out = append(out, Component{"full scale of the " + role + " input (calibration)", value * t.Standard(float64(c.FullScale[role])), 0})
 	}
 	if t, ok := c.uncertainty("gain", role); ok {
-		out = append(out, Component{"gain between module and input (calibration)", value * t.Standard(float64(c.Gain[role])), 0})
+		source := "gain between module and input (calibration)"
+		if role == Quadrature {
+			source = "gain between module and quadrature input (calibration)"
+		}
+		out = append(out, Component{source, value * t.Standard(float64(c.Gain[role])), 0})
 	}
 	if _, u := c.gainAt(role, hz); u > 0 {
 		out = append(out, Component{"gain over frequency before the " + role + " input (calibration)", value * u, 0})

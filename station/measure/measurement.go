@@ -64,6 +64,8 @@ type Bench struct {
 	LargestDrive quantity.Voltage
 	// Travel is how far the stage can go either way from the nominal standoff.
 	Travel quantity.Length
+	// Ripple says that a sine can be put on the supply.
+	Ripple bool
 }
 
 // Schedule is the acquisitions of one step and the conditions they make.
@@ -92,6 +94,8 @@ type Acquisition struct {
 	Supply *quantity.Voltage
 	// Event is something that happens while this acquisition is recorded.
 	Event *SupplyEvent
+	// Ripple is a sine on the supply during this acquisition.
+	Ripple *RippleTone
 }
 
 // SupplyEvent is a change of the supply in the middle of a recording. It happens some time
@@ -99,6 +103,7 @@ type Acquisition struct {
 type SupplyEvent struct {
 	At      int               // frames recorded when the supply is told
 	Voltage *quantity.Voltage // the new voltage; nil: the step's
+	By      quantity.Voltage  // what is added to it
 }
 
 // Duration is how long the acquisition records and settles.

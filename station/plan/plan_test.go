@@ -48,7 +48,7 @@ func TestStarterPlan(t *testing.T) {
 func TestParseRefuses(t *testing.T) {
 	for _, c := range []struct{ name, steps, want string }{
 		{"unknown step", "  - sing: loud\n", "p.yaml:6: a step has none of the keys ask, supply, measure: write - ask: …, - supply: … or - measure: …"},
-		{"unknown measurement", "  - supply: 5 V\n  - measure: magic\n", `p.yaml:7: measurement "magic" is not known: one of carrier distortion noise_floor pushing quadrature response sensitivity startup supply_current`},
+		{"unknown measurement", "  - supply: 5 V\n  - measure: magic\n", `p.yaml:7: measurement "magic" is not known: one of carrier distortion noise_floor pushing quadrature response sensitivity startup supply_current supply_rejection`},
 		{"unknown parameter", "  - supply: 5 V\n  - {measure: supply_current, volume: 11}\n", `p.yaml:7: unknown key "volume" in this mapping: one of acquire, using`},
 		{"wrong dimension", "  - supply: 5 mA\n", `p.yaml:6: supply "5 mA" is a current: write a voltage, such as 5 V`},
 		{"unpowered", "  - measure: supply_current\n", "p.yaml:6: supply_current comes before the supply is on: write - supply: … before it"},

@@ -13,7 +13,7 @@ func joined(list []error) error { return errors.Join(list...) }
 
 // typical is a bench on which a plan's times are worked out where no station is named.
 func typical(m measure.Module) measure.Bench {
-	return measure.Bench{Module: m, SampleRate: 48000, Standoff: 0.22, Chop: 400, Mains: 50, Largest: 1, LargestDrive: 1e9, Travel: 0.03,
+	return measure.Bench{Module: m, SampleRate: 48000, Standoff: 0.22, Chop: 400, Mains: 50, Largest: 1, LargestDrive: 1e9, Travel: 0.03, Ripple: true,
 		PerVolt: func(quantity.Frequency) quantity.DisplacementPerVolt { return 1e-3 }}
 }
 
