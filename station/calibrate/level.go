@@ -8,7 +8,6 @@ import (
 	"lotgate/fixtures"
 	"lotgate/fixtures/calibration"
 	"lotgate/limits/quantity"
-	"lotgate/station/signal"
 )
 
 // Level finds the volts peak at digital full scale of a sound input, its frequency response,
@@ -67,12 +66,6 @@ func (l Level) Run(ctx context.Context, s *Session) (*calibration.File, error) {
 	}
 	return f, nil
 }
-
-// harmonicsOf is how many odd multiples of a chopping frequency are used.
-const harmonicsOf = 6
-
-// highestHz is up to where an input's response is looked at.
-const highestHz = 2200
 
 func (l Level) chopped(ctx context.Context, s *Session, f *calibration.File, channel int, nominal float64) error {
 	if s.Bench.Chopper == nil {
@@ -156,170 +149,6 @@ func (l Level) atVoltage(ctx context.Context, s *Session, channel int, volts flo
 		return out, wrong("check that the chopper switches fully at 50 % duty", "the chopped voltage has a second harmonic of %.1f %% of its fundamental", 100*epsilon)
 	}
 	return out, nil
-}
-
-// squareTones are the first odd multiples of a chopped voltage, and the second, over repeats:
-// peaks as fractions of full scale.
-type squareTones struct {
-	hz      []float64
-	odd     []gather
-	second  float64 // largest
-	scatter float64 // relative, of one repeat's fundamental
-}
-
-// choppedTones records a chopped voltage repeatedly and reads its lines one by one. The noise of a
-// line is what the repeats scatter by, all lines together: it is the same for all of them.
-func (s *Session) choppedTones(ctx context.Context, channel int, chop, seconds float64) (out squareTones, err error) {
-	if err := s.Bench.Chopper.Chop(ctx, quantity.Frequency(chop)); err != nil {
-		return out, err
-	}
-	defer func() {
-		if stop := s.Bench.Chopper.Chop(context.WithoutCancel(ctx), 0); err == nil {
-			err = stop
-		}
-	}()
-	for n := 1.0; n < 2*harmonicsOf && n*chop < 0.42*s.rate(); n += 2 {
-		out.hz = append(out.hz, n)
-	}
-	out.odd = make([]gather, len(out.hz))
-	first := 0.0
-	for range s.repeats() {
-		rec, err := s.record(ctx, nil, []int{channel}, s.frames(seconds), nil)
-		if err != nil {
-			return out, err
-		}
-		x := rec.Samples[channel]
-		// The controller's clock is not the sound interface's.
-		w := signal.RefineTone(x, 2*math.Pi*signal.StrongestNear(x, s.rate(), chop, 0.03)/s.rate())
-		first += w * s.rate() / (2 * math.Pi) / float64(s.repeats())
-		lines := []float64{2 * w}
-		for _, n := range out.hz {
-			lines = append(lines, n*w)
-		}
-		tones := signal.WindowedTones(x, lines)
-		out.second = math.Max(out.second, cmplx.Abs(tones[0]))
-		for i := range out.odd {
-			out.odd[i].values = append(out.odd[i].values, cmplx.Abs(tones[i+1]))
-		}
-	}
-	for i := range out.hz {
-		out.hz[i] *= first
-	}
-	return out, pool(out.odd, &out.scatter)
-}
-
-// pool gives all lines the scatter that they show together, and refuses repeats whose strongest
-// line differs by far more.
-func pool(lines []gather, scatter *float64) error {
-	square, dof := 0.0, 0.0
-	for _, g := range lines {
-		v, _, relative := g.mean()
-		n := float64(len(g.values))
-		square, dof = square+(n-1)*v*v*relative*relative, dof+n-1
-	}
-	sigma := math.Sqrt(square / dof)
-	for i := range lines {
-		lines[i].sigma = math.Max(sigma, 1e-9)
-	}
-	_, _, *scatter = lines[0].mean()
-	return lines[0].agree("the chopped voltage", 1e-3)
-}
-
-// response collects ln(n·a_n) over frequency at all chopping frequencies.
-func (l Level) response(ctx context.Context, s *Session, channel int, volts float64) ([]signal.Scattered, error) {
-	err := s.connect(ctx, fixtures.Wiring{What: fixtures.ChoppedToInput, Input: channel, Volts: quantity.Voltage(volts)},
-		"Set the source back to about %v; it need not be read again.", quantity.Voltage(volts))
-	if err != nil {
-		return nil, err
-	}
-	var out []signal.Scattered
-	for _, chop := range l.chops() {
-		seconds := math.Max(2, 24/chop)
-		s.tell("chopping at %v for %.0f s", quantity.Frequency(chop), seconds*float64(s.repeats()))
-		t, err := s.choppedTones(ctx, channel, chop, seconds)
-		if err != nil {
-			return nil, err
-		}
-		for i, hz := range t.hz {
-			n := float64(2*i + 1)
-			if v, u, _ := t.odd[i].mean(); hz <= highestHz && v > 10*u {
-				out = append(out, signal.Scattered{X: math.Log(hz), Y: math.Log(n * v), Sigma: math.Hypot(u/v, leastRelative)})
-			}
-		}
-	}
-	return out, nil
-}
-
-// leastRelative is the relative standard uncertainty below which no amplitude is trusted.
-const leastRelative = 1e-9
-
-// curve fits the high-pass and what is left over, and fills the file's curve.
-func (l Level) curve(f *calibration.File, points []signal.Scattered) error {
-	corner := fitCorner(points)
-	// Around the corner found: columns are the level and its derivative by ln fc.
-	model := func(x float64) float64 { return -0.5 * math.Log1p(math.Exp(2*(corner-x))) }
-	shifted := make([]signal.Scattered, len(points))
-	for i, p := range points {
-		shifted[i] = signal.Scattered{X: p.X, Y: p.Y - model(p.X), Sigma: p.Sigma}
-	}
-	smooth, err := signal.FitSmooth(shifted, func(x float64) []float64 {
-		return []float64{1, -1 / (1 + math.Exp(2*(x-corner)))}
-	}, 0.7, 3)
-	if err != nil {
-		return err
-	}
-	found := quantity.Frequency(math.Exp(corner))
-	f.Values[calibration.HighPass] = calibration.Found(found, found*quantity.Frequency(expanded(cornerU(points, corner)*math.Sqrt(math.Max(1, smooth.Misfit)))))
-	reference := math.Log(float64(l.Reference))
-	// The curve holds what the high-pass, at the corner as it is written, leaves over.
-	written := func(x float64) float64 { return -0.5 * math.Log1p(math.Exp(2*(math.Log(float64(found))-x))) }
-	f.Curve = drawn(0.8*float64(l.Lowest), highestHz, quantity.One, func(x float64) (float64, float64) {
-		y, u := smooth.Between(x, reference)
-		return y + model(x) - model(reference) - written(x), u
-	})
-	if smooth.Misfit > 4 {
-		f.Notes = append(f.Notes, "the input is no plain first-order high-pass: its response is smoothed through the points measured")
-	}
-	return nil
-}
-
-// fitCorner is ln fc of the least squares of level − ½·ln(1 + (fc/f)²), by search and Newton-like
-// halving: the level is eliminated.
-func fitCorner(points []signal.Scattered) float64 {
-	cost := func(corner float64) float64 {
-		var sw, sy, syy float64
-		for _, p := range points {
-			w := 1 / (p.Sigma * p.Sigma)
-			y := p.Y + 0.5*math.Log1p(math.Exp(2*(corner-p.X)))
-			sw, sy, syy = sw+w, sy+w*y, syy+w*y*y
-		}
-		return syy - sy*sy/sw
-	}
-	best, step := math.Log(0.01), 0.5
-	for x := best; x < math.Log(200); x += step {
-		if cost(x) < cost(best) {
-			best = x
-		}
-	}
-	for step > 1e-9 {
-		step /= 2
-		for _, x := range []float64{best - step, best + step} {
-			if cost(x) < cost(best) {
-				best = x
-			}
-		}
-	}
-	return best
-}
-
-// cornerU is the standard uncertainty of ln fc that the points' scatter leaves.
-func cornerU(points []signal.Scattered, corner float64) float64 {
-	var s0, s1, s2 float64
-	for _, p := range points {
-		w, g := 1/(p.Sigma*p.Sigma), -1/(1+math.Exp(2*(p.X-corner)))
-		s0, s1, s2 = s0+w, s1+w*g, s2+w*g*g
-	}
-	return math.Sqrt(s0 / (s0*s2 - s1*s1))
 }
 
 // alternating finds full scale from an AC voltage.
