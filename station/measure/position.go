@@ -19,6 +19,25 @@ func (c *Capture) position() (sigma float64, source string) {
 	return positionTolerance.Absolute / 2, "where the stage stops (10 µm, common practice)"
 }
 
+// pickUpTolerance is the standard uncertainty, relative to the largest amplitude of the tone, of what is heard
+// at the tone wherever the plate stands: the shaker's frame and the nest move a little too (common
+// practice).
+const pickUpTolerance = 0.001
+
+// pickedUp is what a constant of size one in every row does to P and Q worked out as sums of rows, in
+// the direction of (P, Q) and across it.
+func pickedUp(p, q float64, weightP, weightQ []float64) (along, across float64) {
+	size := math.Hypot(p, q)
+	if size == 0 {
+		return 0, 0
+	}
+	var dp, dq float64
+	for k := range weightP {
+		dp, dq = dp+weightP[k], dq+weightQ[k]
+	}
+	return math.Abs(p*dp+q*dq) / size, math.Abs(q*dp-p*dq) / size
+}
+
 // astray is what a stage that stops astray by sigma (m, independently at each place) does to
 // P = V0·sin φ0 and Q = V0·cos φ0 worked out as sums of rows: row k, at the phase psi[k], is off by
 // V0·cos(φ0 − ψ_k)·4πσ/λ. along is the effect in the direction of V0 (V), across that at right

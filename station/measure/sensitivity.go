@@ -320,16 +320,18 @@ func (m *Sensitivity) fromPositions(c *Capture, fits []toneFit) (Result, error) 
 	}
 	sigma, source := c.position()
 	along, across := astray(p, q, psis, weightP, weightQ, sigma, lambda)
-	components = append(components, Component{source, along, 0})
+	const pickUpSource = "pick-up at the tone (0.1 %, common practice)"
+	pickAlong, pickAcross := pickedUp(p, q, weightP, weightQ)
+	components = append(components, Component{source, along, 0}, Component{pickUpSource, pickAlong * pickUpTolerance * name, 0})
 	e := Reading{Name: c.Step + ".echo", Unit: "V", Value: echo, Budget: Combine(components...)}
 	if power < 9*(up+uq) {
 		e.Notes = append(e.Notes, "the tone does not stand out of the noise")
 	}
-	stops := Component{source, 0, 0}
+	stops, picked := Component{source, 0, 0}, Component{pickUpSource, pickAcross * pickUpTolerance, 0}
 	if power > 0 {
 		stops.U = across / math.Sqrt(power)
 	}
-	return Result{Readings: []Reading{e, m.phase(c, p, q, up, uq, dof, aligned, power, stops)}}, nil
+	return Result{Readings: []Reading{e, m.phase(c, p, q, up, uq, dof, aligned, power, stops, picked)}}, nil
 }
 
 func (m *Sensitivity) phase(c *Capture, p, q, up, uq, dof float64, aligned bool, power float64, further ...Component) Reading {

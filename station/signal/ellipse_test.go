@@ -55,7 +55,7 @@ func TestEllipseGivesHeydemannsErrors(t *testing.T) {
 // found is the one stated.
 func TestEllipseIsUnbiasedAndKnowsItsScatter(t *testing.T) {
 	rnd := rand.New(rand.NewPCG(42, 1))
-	const runs, n = 4000, 12
+	const runs, n = 1500, 12
 	want := [5]float64{0.03, -0.05, 1, 0.8, 1.7}
 	const sigmaX, sigmaY = 0.01, 0.02
 	var sum, square, stated [5]float64
