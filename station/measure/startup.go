@@ -33,7 +33,7 @@ type Startup struct {
 	Acquire   quantity.Time       `key:"acquire" range:">0" doc:"how long to record after the supply comes on; default 2 s"`
 	Rest      quantity.Time       `key:"rest" range:">=0" doc:"how long the module is left without supply before; default 1 s"`
 	CouplingU tolerance.Tolerance `key:"coupling_uncertainty" doc:"expanded uncertainty (k = 2) of coupling; default 5 %"`
-	Coupling  quantity.Frequency  `key:"coupling" range:">=0" doc:"lower corner of the IF's sound input, whose undershoot is taken out; default 0 Hz, none"`
+	Coupling  quantity.Frequency  `key:"coupling" range:">=0" doc:"lower corner of the IF's sound input, whose undershoot is taken out; default: the one calibrated, or none"`
 }
 
 var _ = register(Kind{"startup", "time from the supply's coming on until IF and current have settled", func() Measurement {
@@ -116,15 +116,29 @@ func (m *Startup) Evaluate(c *Capture) (Result, error) {
 	return Result{Readings: []Reading{m.ifSettles(c, ifs, chop, volts), m.currentSettles(c, chop)}}, nil
 }
 
+// corner is the lower corner of the IF's input, Hz, with its relative standard uncertainty: that of the
+// plan, or the one calibrated; zero where neither is known.
+func (m *Startup) corner(c *Capture) (hz, relative float64) {
+	if m.Coupling > 0 {
+		return float64(m.Coupling), m.CouplingU.Standard(float64(m.Coupling))
+	}
+	g := c.Response[IF]
+	if g.HighPass == 0 {
+		return 0, 0
+	}
+	_, u := g.At(g.HighPass)
+	return float64(g.HighPass), u / 2
+}
+
 // restored is the IF at the module's output with the input's high-pass taken out, less its mean before
 // the onset, and by how much it was changed.
-func (m *Startup) restored(s Signal, before int, volts float64) (x, added []float64) {
+func (m *Startup) restored(s Signal, before int, volts, corner float64) (x, added []float64) {
 	mean := 0.0
 	for _, v := range s.Samples[:before] {
 		mean += v / float64(before)
 	}
 	x, added = make([]float64, len(s.Samples)), make([]float64, len(s.Samples))
-	share := -math.Expm1(-2 * math.Pi * float64(m.Coupling) / s.Rate)
+	share := -math.Expm1(-2 * math.Pi * corner / s.Rate)
 	blocked := 0.0
 	for i, v := range s.Samples {
 		v -= mean
@@ -142,7 +156,8 @@ func (m *Startup) restored(s Signal, before int, volts float64) (x, added []floa
 func (m *Startup) ifSettles(c *Capture, s Signal, chop chopped, volts float64) Reading {
 	r := Reading{Name: c.Step + ".if", Unit: "s"}
 	before := max(1, int((chop.onset-chop.late)*s.Rate)-2)
-	x, added := m.restored(s, before, volts)
+	corner, cornerU := m.corner(c)
+	x, added := m.restored(s, before, volts, corner)
 	tail := len(x) - int(settledShare*float64(len(x)-before))
 	final := 0.0
 	for _, v := range x[tail:] {
@@ -182,10 +197,10 @@ func (m *Startup) ifSettles(c *Capture, s Signal, chop chopped, volts float64) R
 	r.Budget = Combine(Component{"noise at the crossing", found.noise / slope, found.count - 1}, Component{"onset of the current (half a period of the chopper)", chop.sigma, 0},
 		Component{"shape of the curve at the crossing", shape, 0},
 		Component{"final value", math.Hypot(found.noise/math.Sqrt(found.count), drift) / slope, found.count - 1},
-		Component{"high-pass of the input", math.Abs(added[int(found.index)]) * m.CouplingU.Standard(float64(m.Coupling)) / slope, 0},
+		Component{"high-pass of the input", math.Abs(added[int(found.index)]) * cornerU / slope, 0},
 		Component{"level (calibration)", m.levelShare(c) * float64(m.Band) / slope, 0})
-	if m.Coupling == 0 {
-		r.Notes = append(r.Notes, "the input's own high-pass is not taken out: give its corner as coupling")
+	if corner == 0 {
+		r.Notes = append(r.Notes, "the input's own high-pass is not taken out: calibrate the input's level, or give its corner as coupling")
 	}
 	return r
 }
