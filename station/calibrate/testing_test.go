@@ -24,7 +24,7 @@ func benches(t testing.TB) int {
 	if testing.Short() {
 		return 4
 	}
-	return 24
+	return 12
 }
 
 // draw makes a bench whose parameters the program is not told.
