@@ -92,9 +92,9 @@ func shownValue(v calibration.Value) string {
 	case v.Value.Unit.Symbol != quantity.One.Symbol || size > 0.05:
 		return quantity.PrintWith(v.Value.Value, v.Uncertainty.Value, v.Value.Unit)
 	case size > 1e-4:
-		return fmt.Sprintf("%.2g %% ± %.2g %%", 100*v.Value.Value, 100*v.Uncertainty.Value)
+		return "(" + quantity.PrintWith(100*v.Value.Value, 100*v.Uncertainty.Value, quantity.One) + ") %"
 	}
-	return fmt.Sprintf("%.4g ppm ± %.2g ppm", 1e6*v.Value.Value, 1e6*v.Uncertainty.Value)
+	return "(" + quantity.PrintWith(1e6*v.Value.Value, 1e6*v.Uncertainty.Value, quantity.One) + ") ppm"
 }
 
 // values prints a calibration's values, with their change since an older one.

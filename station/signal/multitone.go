@@ -26,7 +26,7 @@ func OddLines(seconds, lowHz, highHz float64, count, apart int, mainsHz, clearHz
 			if i == 0 && hz < lowHz {
 				continue
 			}
-			if mainsHz > 0 && math.Abs(hz-mainsHz*math.Round(hz/mainsHz)) < clearHz {
+			if mainsHz > 0 && math.Abs(hz-mainsHz*math.Max(1, math.Round(hz/mainsHz))) < clearHz {
 				continue
 			}
 			out = append(out, candidate)
