@@ -22,7 +22,7 @@ func benches(t testing.TB) int {
 		return n
 	}
 	if testing.Short() {
-		return 4
+		return 2
 	}
 	return 12
 }
