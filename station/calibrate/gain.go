@@ -165,10 +165,11 @@ func (s *Session) levels(ctx context.Context, p play, channel int) (levels, erro
 		if err != nil {
 			return out, err
 		}
-		fits, _, err := s.fit(rec.Samples[channel], out.hz)
+		fits, fit, err := s.fit(rec.Samples[channel], p.hz(s.rate()))
 		if err != nil {
 			return out, err
 		}
+		copy(out.hz, fit.FrequencyHz) // by the input's clock
 		for i, t := range fits {
 			gathers[i].add(cmplx.Abs(t.a), t.sigma)
 		}

@@ -58,10 +58,11 @@ func (b *bench) relative(ctx context.Context, p play, rough []signal.Scattered, 
 		if err != nil {
 			return nil, err
 		}
-		fits, _, err := b.s.fit(rec.Samples[channel], hz)
+		fits, fit, err := b.s.fit(rec.Samples[channel], p.hz(b.s.rate()))
 		if err != nil {
 			return nil, err
 		}
+		copy(hz, fit.FrequencyHz) // by the input's clock
 		if b.t.By == "accelerometer" {
 			if err := b.upright(p, fits); err != nil {
 				return nil, err
