@@ -146,17 +146,23 @@ func (b *bench) overFringe(list []harmonicsAt, first []echoAt) (overFringe, erro
 		axis += e.a * complex(values[i], 0)
 	}
 	f.axis = cmplx.Phase(axis)
-	columns := make([][]float64, len(list))
-	for i, e := range first {
-		g := f.fall(e.position)
-		sin, cos := math.Sincos(f.phi - 4*math.Pi*e.position/b.lambda())
-		columns[i] = []float64{g * sin, g * cos, g * g * g * sin * sin * sin, 2 * g * g * sin * cos, 1}
+	// A cube law makes of the first and the second harmonic, which goes as cos φ, more than sin³ φ: of
+	// (A·cos ωt + B·cos 2ωt)³ the third harmonic is A³/4 + 3AB²/4, the first 3A³/4 + 3AB²/2.
+	second := square(math.Jn(2, b.beta) / math.J1(b.beta))
+	columns := func(cross float64) [][]float64 {
+		out := make([][]float64, len(first))
+		for i, e := range first {
+			g := f.fall(e.position)
+			sin, cos := math.Sincos(f.phi - 4*math.Pi*e.position/b.lambda())
+			out[i] = []float64{g * sin, g * cos, g * g * g * sin * (sin*sin + cross*second*cos*cos), 2 * g * g * sin * cos, 1}
+		}
+		return out
 	}
 	var err error
-	if f.first, f.firstU, err = alongFringe(list, columns, 1, f.axis); err != nil {
+	if f.first, f.firstU, err = alongFringe(list, columns(2), 1, f.axis); err != nil {
 		return f, err
 	}
-	f.third, f.thirdU, err = alongFringe(list, columns, 3, f.axis)
+	f.third, f.thirdU, err = alongFringe(list, columns(3), 3, f.axis)
 	return f, err
 }
 

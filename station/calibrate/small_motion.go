@@ -6,6 +6,7 @@ import (
 	"math/cmplx"
 	"slices"
 
+	"lotgate/fixtures"
 	"lotgate/limits/quantity"
 )
 
@@ -37,14 +38,10 @@ func products(tones []float64) []float64 {
 // smallMotion measures it with four small tones beside the harmonics, on odd lines, so that
 // products of even order fall between them, at two opposite places of the fringe.
 func (b *bench) smallMotion(ctx context.Context, hz float64) (out smallMotion, err error) {
-	if b.t.By != "accelerometer" {
+	if b.t.By == "module" { // its response is known
 		for n := 1; n <= 4; n++ {
-			g := 1.0
-			if b.t.By == "module" {
-				r, _ := b.t.Response.At(quantity.Frequency(float64(n) * hz))
-				g = float64(r)
-			}
-			out.gain[n] = complex(g, 0)
+			g, u := b.t.Response.At(quantity.Frequency(float64(n) * hz))
+			out.gain[n], out.relative[n] = complex(float64(g), 0), u/2
 		}
 		return out, nil
 	}
@@ -70,7 +67,11 @@ func (b *bench) smallMotion(ctx context.Context, hz float64) (out smallMotion, e
 			sign = -1
 		}
 		for range b.s.repeats() {
-			rec, err := b.s.shaken(ctx, p, []int{b.module.Channel, b.plate.Channel}, p.period)
+			inputs := []int{b.module.Channel}
+			if b.t.By == "accelerometer" {
+				inputs = append(inputs, b.plate.Channel)
+			}
+			rec, err := b.s.shaken(ctx, p, inputs, p.period)
 			if err != nil {
 				return out, err
 			}
@@ -78,24 +79,44 @@ func (b *bench) smallMotion(ctx context.Context, hz float64) (out smallMotion, e
 			if err != nil {
 				return out, err
 			}
-			plate, _, err := b.s.fit(rec.Samples[b.plate.Channel], tones)
+			x, relative, err := b.plateAt(rec, p, tones)
 			if err != nil {
 				return out, err
 			}
 			for n := range tones {
-				x := plate[n].a * b.displacement(tones[n])
-				ratio[n] += sign * echo[n].a / b.chain(tones[n]) / x / complex(count, 0)
-				square2[n] += (square(echo[n].sigma/cmplx.Abs(echo[n].a)) + square(plate[n].sigma/cmplx.Abs(plate[n].a))) / square(count)
+				ratio[n] += sign * echo[n].a / b.chain(tones[n]) / x[n] / complex(count, 0)
+				square2[n] += (square(echo[n].sigma/cmplx.Abs(echo[n].a)) + square(relative[n])) / square(count)
 			}
 		}
 	}
 	for n := range tones {
 		out.gain[n+1], out.relative[n+1] = ratio[n], math.Sqrt(square2[n])
 		if out.relative[n+1] > 0.05 {
-			return out, wrong("raise the accelerometer's sensitivity or its input's level", "the accelerometer does not hear the small tones beside the harmonics of %v", quantity.Frequency(hz))
+			return out, wrong("raise the accelerometer's sensitivity or its input's level, or use a module with a stronger echo", "the small tones beside the harmonics of %v are hardly heard", quantity.Frequency(hz))
 		}
 	}
 	return out, nil
+}
+
+// plateAt is the plate's displacement at each tone, up to a common factor, with the relative standard
+// uncertainty of its noise: by the accelerometer, or by the drive and the table.
+func (b *bench) plateAt(rec fixtures.SoundRecord, p play, tones []float64) (x []complex128, relative []float64, err error) {
+	x, relative = make([]complex128, len(tones)), make([]float64, len(tones))
+	if b.t.By == "table" {
+		for n, drive := range p.drives() {
+			d, _ := b.t.Table.At(quantity.Frequency(tones[n]))
+			x[n] = cmplx.Rect(drive*float64(d), p.phase[n])
+		}
+		return x, relative, nil
+	}
+	plate, _, err := b.s.fit(rec.Samples[b.plate.Channel], tones)
+	if err != nil {
+		return nil, nil, err
+	}
+	for n := range tones {
+		x[n], relative[n] = plate[n].a*b.displacement(tones[n]), plate[n].sigma/cmplx.Abs(plate[n].a)
+	}
+	return x, relative, nil
 }
 
 // opposite is the place of the stage λ/4 before that with the large first harmonic: φ is turned by

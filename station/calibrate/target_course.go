@@ -24,6 +24,7 @@ func (b *bench) course(ctx context.Context) ([]signal.Scattered, error) {
 	if err != nil {
 		return nil, err
 	}
+	b.overAbsolute(rough)
 	// The second time each tone is driven as its displacement deserves: more where it is small.
 	amplitude := make([]float64, len(p.lines))
 	for i := range amplitude {
@@ -34,6 +35,20 @@ func (b *bench) course(ctx context.Context) ([]signal.Scattered, error) {
 	}
 	shaped := newPlay(p.period, p.lines, amplitude, signal.SchroederPhases(p.lines, amplitude))
 	return b.relative(ctx, shaped, rough, b.s.repeats())
+}
+
+// overAbsolute relates a course to its value at the tone nearest to the absolute frequency.
+func (b *bench) overAbsolute(course []signal.Scattered) {
+	x := math.Log(float64(b.t.Absolute))
+	nearest := course[0]
+	for _, p := range course {
+		if math.Abs(p.X-x) < math.Abs(nearest.X-x) {
+			nearest = p
+		}
+	}
+	for i := range course {
+		course[i].Y -= nearest.Y
+	}
 }
 
 // relative plays a multitone as strongly as excursion, output and input allow. rough is the
@@ -54,22 +69,13 @@ func (b *bench) relative(ctx context.Context, p play, rough []signal.Scattered, 
 	hz := p.hz(b.s.rate())
 	gathers := make([]gather, len(hz))
 	for range repeats {
-		rec, err := b.s.shaken(ctx, p, []int{channel}, p.period)
+		fits, found, err := b.motion(ctx, p, channel)
 		if err != nil {
 			return nil, err
 		}
-		fits, fit, err := b.s.fit(rec.Samples[channel], p.hz(b.s.rate()))
-		if err != nil {
-			return nil, err
-		}
-		copy(hz, fit.FrequencyHz) // by the input's clock
-		if b.t.By == "accelerometer" {
-			if err := b.upright(p, fits); err != nil {
-				return nil, err
-			}
-		}
+		copy(hz, found) // by the input's clock
 		for i, f := range fits {
-			scale := 1 / (drive[i] * b.gain(hz[i]))
+			scale := 1 / (drive[i] * b.gain(hz[i]) * b.bent(drive[i], rough, i))
 			gathers[i].add(cmplx.Abs(f.a)*scale, f.sigma*scale)
 		}
 	}
@@ -88,6 +94,54 @@ func (b *bench) relative(ctx context.Context, p play, rough []signal.Scattered, 
 		return nil, wrong("check its cable and fixing, and that the shaker moves", "only %d of %d tones are heard by the %s", len(out), len(hz), what)
 	}
 	return out, nil
+}
+
+// motion records a multitone once and fits its tones: on the accelerometer; or on the module at two
+// opposite places of the fringe, of which the difference holds nothing of what it picks up of the
+// drive.
+func (b *bench) motion(ctx context.Context, p play, channel int) ([]found, []float64, error) {
+	at := func() ([]found, []float64, error) {
+		rec, err := b.s.shaken(ctx, p, []int{channel}, p.period)
+		if err != nil {
+			return nil, nil, err
+		}
+		fits, fit, err := b.s.fit(rec.Samples[channel], p.hz(b.s.rate()))
+		return fits, fit.FrequencyHz[:len(fits)], err
+	}
+	if b.t.By == "accelerometer" {
+		fits, hz, err := at()
+		if err == nil {
+			err = b.upright(p, fits)
+		}
+		return fits, hz, err
+	}
+	if err := b.s.Bench.Target.MoveTo(ctx, quantity.Length(b.opposite())); err != nil {
+		return nil, nil, err
+	}
+	other, _, err := at()
+	if err != nil {
+		return nil, nil, err
+	}
+	if err := b.s.Bench.Target.MoveTo(ctx, quantity.Length(b.sine)); err != nil {
+		return nil, nil, err
+	}
+	fits, hz, err := at()
+	for i := range other {
+		fits[i].a = (fits[i].a - other[i].a) / 2
+		fits[i].sigma /= math.Sqrt2
+	}
+	return fits, hz, err
+}
+
+// bent is by how much the mixer makes a tone of a multitone smaller than a straight line would,
+// up to what all tones share: 2·J1(β)/(β·J0(β)), with β in proportion to the drive as the ramp found
+// it. An accelerometer is straight.
+func (b *bench) bent(drive float64, rough []signal.Scattered, i int) float64 {
+	if b.t.By != "module" || rough == nil {
+		return 1
+	}
+	beta := b.beta * drive / b.level * math.Exp(rough[i].Y)
+	return 2 * math.J1(beta) / (beta * math.J0(beta))
 }
 
 // gain is what stands between displacement and samples at a frequency, up to a common factor.

@@ -10,6 +10,8 @@ import (
 	"lotgate/fixtures/calibration"
 	"lotgate/fixtures/virtual"
 	"lotgate/limits/quantity"
+	"lotgate/limits/quantity/curve"
+	"lotgate/limits/quantity/tolerance"
 )
 
 // shakerAt is a damped oscillator's displacement per volt: D0/√((1 − u²)² + (u/Q)²).
@@ -58,10 +60,10 @@ func TestTargetRecoversTheTruth(t *testing.T) {
 		if err != nil {
 			t.Fatal(seed, err)
 		}
-		curve := calibration.CurveOf[quantity.DisplacementPerVolt](f)
+		displacement := calibration.CurveOf[quantity.DisplacementPerVolt](f)
 		perVolt := float64(settings.Target.PerVolt) / float64(b.Advertise().Displacement[0].Value) * float64(b.Actual().Displacement[0].Value)
 		for hz, c := range at {
-			d, u := curve.At(quantity.Frequency(hz))
+			d, u := displacement.At(quantity.Frequency(hz))
 			truth := shakerAt(hz, perVolt, settings.Target)
 			// The limit: the noise under the faintest harmonic, and what the accelerometer is good for.
 			accelerometer := math.Hypot(float64(flat)*math.Sqrt(math.Abs(math.Log10(hz/19))), 0.5*float64(flat)*math.Sqrt(math.Log10(3)))
@@ -72,6 +74,40 @@ func TestTargetRecoversTheTruth(t *testing.T) {
 	}
 	for _, hz := range list {
 		at[hz].check(t)
+	}
+}
+
+// TestTargetByModuleAndTable: the two other ways to the course over frequency agree with the truth
+// within their uncertainty, too.
+func TestTargetByModuleAndTable(t *testing.T) {
+	for seed := range 3 {
+		settings := draw(seed)
+		_, b := targetSession(t, settings)
+		perVolt := float64(settings.Target.PerVolt) / float64(b.Advertise().Displacement[0].Value) * float64(b.Actual().Displacement[0].Value)
+		module := Target{By: "module", Carrier: settings.Carrier, CarrierU: 4e-4}
+		table := Target{By: "table", Carrier: settings.Carrier, CarrierU: 4e-4}
+		u := tolerance.Percent(0.003)
+		for hz := 0.8; hz < 1500; hz *= 1.12 {
+			f := quantity.Frequency(hz)
+			gain := quantity.Ratio(math.Pow(10, float64(b.Truth().ResponseAt(f, 80))/20))
+			module.Response.Points = append(module.Response.Points, curve.Point[quantity.Ratio]{Frequency: f, Value: gain, Uncertainty: &u})
+			// A table in another unit's size: only its course is used.
+			table.Table = append(table.Table, curve.Point[quantity.DisplacementPerVolt]{Frequency: f, Value: quantity.DisplacementPerVolt(3 * shakerAt(hz, perVolt, settings.Target)), Uncertainty: &u})
+		}
+		for _, p := range []Target{module, table} {
+			s, _ := targetSession(t, settings)
+			f, err := s.Do(t.Context(), p)
+			if err != nil {
+				t.Fatal(seed, err)
+			}
+			found := calibration.CurveOf[quantity.DisplacementPerVolt](f)
+			for _, hz := range []float64{2, 10, 19, 60, 150, 500} {
+				d, u := found.At(quantity.Frequency(hz))
+				if truth := shakerAt(hz, perVolt, settings.Target); math.Abs(float64(d)/truth-1) > 1.5*u {
+					t.Errorf("seed %d, by %s, %g Hz: %.4g m/V ± %.2g %%, truth %.4g", seed, p.By, hz, d, 100*u, truth)
+				}
+			}
+		}
 	}
 }
 
