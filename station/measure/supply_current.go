@@ -38,6 +38,13 @@ const thirdHarmonicTolerance = 0.05
 // no calibration is given, relative (common practice: 0.5 % class).
 const reportedTolerance = 0.005
 
+// What the supply's own error makes of the current: the standard uncertainty of a trade supply's voltage,
+// V, and the relative change of a module's current per volt, 1/V (common practice).
+const (
+	supplyVolts  = 0.005
+	currentSlope = 0.06
+)
+
 // Readings offers the current itself.
 func (m *SupplyCurrent) Readings() []Offer { return []Offer{{"", quantity.Ampere, false}} }
 
@@ -77,6 +84,7 @@ func (m *SupplyCurrent) Evaluate(c *Capture) (Result, error) {
 	components := append([]Component{{"scatter of the fitted fundamental", scatter, f.dof}},
 		c.levelComponents(Sense, value, float64(c.Shunt.Chop))...)
 	components = append(components, Component{"shunt and its amplifier (calibration)", value * c.Uncertainty["shunt"].Standard(float64(c.Shunt.Resistance)), 0})
+	components = append(components, Component{"supply voltage (10 mV at 6 %/V, common practice)", value * supplyVolts * currentSlope, 0})
 	if t, ok := c.Uncertainty["offset"]; ok {
 		components = append(components, Component{"offset of the sense amplifier (calibration)", t.Absolute / 2, 0})
 	}
