@@ -35,6 +35,11 @@ const gainSeconds = 10
 // (common practice: a delta-sigma converter is linear to 0.02 % over 60 dB).
 const levelStepU = 2e-4
 
+// betweenTones is the relative standard uncertainty that a smooth curve through tones a third of an
+// octave apart leaves beside their noise, for a preamplifier whose gain steps by some percent
+// (found on the virtual bench).
+const betweenTones = 7e-7
+
 // Run calibrates.
 func (g Gain) Run(ctx context.Context, s *Session) (*calibration.File, error) {
 	in, err := s.input(g.Input)
@@ -109,7 +114,10 @@ func (g Gain) curve(f *calibration.File, direct, through levels, ratio, ratioU f
 	gain := math.Exp(y)
 	f.Values[calibration.GainValue] = calibration.Found(quantity.Ratio(gain), quantity.Ratio(gain*expanded(ratioU, u)))
 	low, high := math.Exp(points[0].X), math.Exp(points[len(points)-1].X)
-	f.Curve = drawn(low, high, quantity.One, func(x float64) (float64, float64) { return smooth.Between(x, at) })
+	f.Curve = drawn(low, high, quantity.One, func(x float64) (float64, float64) {
+		y, u := smooth.Between(x, at)
+		return y, math.Hypot(u, betweenTones)
+	})
 	if gain < 1.5 {
 		f.Notes = append(f.Notes, "the gain is hardly above one: was the preamplifier in the path?")
 	}
