@@ -107,7 +107,7 @@ func fromScratch(t testing.TB, seed int) (*attach.File, *attach.Attached) {
 // TestModuleAfterCalibrationFromScratch: a module's readings agree with its truth after every
 // value of the bench was found by calibration, down to 1 Hz.
 func TestModuleAfterCalibrationFromScratch(t *testing.T) {
-	runs := 6
+	runs := 3
 	if n, err := strconv.Atoi(os.Getenv("LOTGATE_COVERAGE")); err == nil {
 		runs = n
 	}

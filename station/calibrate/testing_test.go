@@ -24,7 +24,7 @@ func benches(t testing.TB) int {
 	if testing.Short() {
 		return 2
 	}
-	return 12
+	return 8
 }
 
 // draw makes a bench whose parameters the program is not told.
